@@ -156,4 +156,5 @@ def lane_jacobian(p: Array, points_m: Array, size_px: tuple[int, int]) -> tuple[
     """
     _, by_p, by_point = project_jacobian(p, points_m, size_px)
     inverse = np.linalg.inv(by_point[:, :, [0, 2]])
-    return inverse, -inverse @ by_p, -np.einsum("nij,nj->ni", inverse, by_point[:, :, 1])
+    by_y = -np.einsum("nij,nj->ni", inverse, by_point[:, :, 1])
+    return np.asarray(inverse), np.asarray(-inverse @ by_p), np.asarray(by_y)
