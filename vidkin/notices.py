@@ -202,6 +202,31 @@ REGISTRY: Final[dict[str, Entry]] = {
         "The speed curve may carry step ripple.",
     ),
     # --- fit ---
+    "humidity_assumed": Entry(
+        "fit",
+        "info",
+        "Humidity is not stated; {percent:.0f} % was used (it moves the air's density by less than 1 %).",
+        "State [air] humidity_pct.",
+    ),
+    "wind_unknown": Entry(
+        "fit",
+        "warning",
+        "Wind is not stated; still air within {sd:g} m/s (sd) was used.",
+        "State [air] wind_mps (+ is a tailwind).",
+    ),
+    "lumped_drag": Entry(
+        "fit",
+        "warning",
+        "Power and drag fitted together give an effective drag area of {area:.2f} m^2, {ratio:.1f} times that of the body "
+        "in air ({body:.2f} m^2): it lumps the body's own losses into the air and is not aerodynamic.",
+        "For the air alone read drag_force, which comes from body size.",
+    ),
+    "law_misses_curve": Entry(
+        "fit",
+        "warning",
+        "The law '{law}' leaves the smoothed speed curve by up to {mps:.2f} m/s, more than their errors allow.",
+        "Trust the curve where they part; look at the residuals.",
+    ),
 }
 
 FAILURES: Final[dict[str, Entry]] = {
@@ -313,6 +338,54 @@ FAILURES: Final[dict[str, Entry]] = {
         "Film from farther away, so that at least two steps are in view.",
     ),
     # --- fit ---
+    "no_body_or_air": Entry(
+        "fit",
+        "warning",
+        "Force, power and drag need body and air; missing: {missing}.",
+        "State them in the sheet.",
+    ),
+    "too_little_run": Entry(
+        "fit",
+        "serious",
+        "{metres:.1f} m of running in {rows} rows; at least {least:g} m are needed for a law.",
+        "Film a longer stretch.",
+    ),
+    "no_law_fits": Entry(
+        "fit",
+        "serious",
+        "No sprint law could be fitted: {why}.",
+        "Look at motion.csv and tracked.mp4: is this one runner's whole pass?",
+    ),
+    "law_not_solved": Entry(
+        "fit",
+        "warning",
+        "The law '{law}' could not be fitted: {why}.",
+        "A longer stretch in view gives it more to hold on to.",
+    ),
+    "start_not_seen": Entry(
+        "fit",
+        "warning",
+        "The runner is already moving when first seen; {names} need the start in view.",
+        "Film the start, with a moment of stillness before it.",
+    ),
+    "plateau_not_seen": Entry(
+        "fit",
+        "warning",
+        "{names} refused: the run in view ends at {percent:.0f} % of V0, at least {least:.0f} % is needed.",
+        "Film farther from the lane, so that more of the run is in view.",
+    ),
+    "drag_not_fitted": Entry(
+        "fit",
+        "warning",
+        "Z and k_drag (power and drag fitted together) refused: {why}.",
+        "Film a longer stretch; drag_force from body size does not need it.",
+    ),
+    "no_steps": Entry(
+        "fit",
+        "warning",
+        "step_rate and step_length refused: {why}",
+        "Film at least three steps with the legs clear of the background.",
+    ),
     # --- report ---
     "not_run": Entry(
         "report",

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
@@ -15,10 +15,14 @@ from vidkin.stages import Array, Bools, Camera, Lane, Steps, Track
 #: Step rates of walking to all-out sprinting [Hz] (references: 4-6 at top speed; walking about 1.8).
 _RATES_HZ: Final = (1.2, 6.0)
 _BIN_M: Final = 0.02
+_SAME_FOOT_M: Final = 0.35
+_AT_REST_MPS: Final = 0.5
 #: A runner is within the lane; without better knowledge this sd about its centre [m].
 LANE_SD_M: Final = 0.15
 #: What the lowest row of a silhouette is worth [px]: outline, blur and sole thickness are the same in all frames.
 _ROW_SD_PX: Final = 1.2
+#: The ground plane itself, as the marks define it [m].
+_GROUND_SD_M: Final = 0.02
 _LEAST_CYCLES: Final = 2.0
 
 
@@ -46,6 +50,9 @@ def find_steps(track: Track, camera: Camera, lane: Lane) -> Steps | Failure:
         return failure("no_step_rhythm", seconds=float(np.ptp(t[moving])) if np.any(moving) else 0.0)
     rate_hz, rate_sd = rate
     contacts = _contacts(track, camera, lane, rate_hz)
+    if np.polyfit(t[:6] - t[0], x[:6], 1)[0] < _AT_REST_MPS:
+        # The feet of the set position are no steps.
+        contacts = [c for c in contacts if c.on_s > t[moving][0] - 0.5 / rate_hz]
     remarks: list[Notice] = []
     if len(contacts) >= 3:
         rate_hz, rate_sd = _rate_of(contacts, (float(t[0]), float(t[-1])), (rate_hz, rate_sd))
@@ -183,9 +190,15 @@ def _grouped(
     contacts.sort(key=lambda c: c.on_s)
     kept: list[_Contact] = []
     for c in contacts:
-        # Heel and toe of one foot, or a contact broken by noise: the longer one stands for both.
-        if kept and c.on_s - kept[-1].on_s < 0.4 / rate_hz:
-            if c.off_s - c.on_s > kept[-1].off_s - kept[-1].on_s:
+        last = kept[-1] if kept else None
+        if last and abs(c.x_m - last.x_m) < _SAME_FOOT_M and c.on_s - last.off_s < 0.3 / rate_hz:
+            # Heel and toe of one foot, or a contact broken by noise.
+            kept[-1] = replace(
+                last if last.off_s - last.on_s > c.off_s - c.on_s else c, on_s=last.on_s, off_s=max(c.off_s, last.off_s)
+            )
+        elif last and c.on_s - last.on_s < 0.55 / rate_hz:
+            # Two feet cannot follow one another this fast: the longer contact is the foot.
+            if c.off_s - c.on_s > last.off_s - last.on_s:
                 kept[-1] = c
         else:
             kept.append(c)
@@ -221,7 +234,8 @@ def _lateral(contacts: list[_Contact], camera: Camera, lane: Lane) -> tuple[floa
     if len(contacts) < 3:
         return *prior, False
     size = (camera.width_px, camera.height_px)
-    soles = np.array([[c.u_px, c.v_px + 0.5] for c in contacts])
+    # Half a pixel of edge and one of blur: what is left of the outline's rim lies below the sole.
+    soles = np.array([[c.u_px, c.v_px - 0.5] for c in contacts])
     y = optics.to_plane(camera.parameters, soles, size, axis=2, value_m=0.0)[:, 1]
     lower = optics.to_plane(camera.parameters, soles + np.array([0.0, 1.0]), size, axis=2, value_m=0.0)[:, 1]
     good = np.isfinite(y) & np.isfinite(lower)
@@ -229,6 +243,9 @@ def _lateral(contacts: list[_Contact], camera: Camera, lane: Lane) -> tuple[floa
         return *prior, False
     per_row = float(np.median(np.abs(lower - y)[good]))
     scatter = 1.4826 * float(np.median(np.abs(y[good] - np.median(y[good])))) / np.sqrt(np.count_nonzero(good))
-    seen, seen_sd = float(np.median(y[good])), float(np.hypot(_ROW_SD_PX * per_row, scatter))
+    seen, seen_sd = (
+        float(np.median(y[good])),
+        float(np.sqrt((_ROW_SD_PX * per_row) ** 2 + scatter**2 + _GROUND_SD_M**2)),
+    )
     weight = prior[1] ** 2 / (prior[1] ** 2 + seen_sd**2)
     return prior[0] + weight * (seen - prior[0]), float(prior[1] * np.sqrt(1 - weight)), weight > 0.1

@@ -1,0 +1,7 @@
+"""The power and drag fitting core: positions (or any speed or split table) -> Fit."""
+
+from __future__ import annotations
+
+from vidkin.core.fit.core import fit_motion, fit_series
+
+__all__ = ["fit_motion", "fit_series"]
