@@ -10,7 +10,8 @@ from vidkin.core.camera import resect
 from vidkin.core.fit import fit_motion
 from vidkin.core.motion import measure
 from vidkin.core.steps import find_steps
-from vidkin.stages import Analysis, Camera, Failure, Footage, Frame, FrameSource, Rep, Settings
+from vidkin.notices import Failure
+from vidkin.stages import Analysis, Camera, Footage, Frame, FrameSource, Rep, Settings
 
 Progress = Callable[[str, int], None]
 

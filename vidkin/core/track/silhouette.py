@@ -29,6 +29,10 @@ _SHADOW_BAND_M: Final = 0.45
 _SHADOW_RATIO: Final = (0.25, 0.985)
 _DEEPEST_M: Final = 0.12
 _FEET_CUT_M: Final = 0.03
+#: Width of the rim that blur and compression add to a silhouette [px].
+_RIM_PX: Final = 2
+#: Differences above this are body even beside a stronger one.
+_SURE: Final = 9.0
 _LEG_BAND: Final = 0.45
 
 
@@ -48,6 +52,18 @@ class Body:
     spread: float
     lows: Array
     cut: bool
+
+
+def _trimmed(mask: NDArray[np.uint8], score: Singles) -> NDArray[np.uint8]:
+    """Move the outline to where the difference has risen half-way: a low threshold alone lies outside the body.
+
+    Only a thin rim is judged, so weak contrast inside the body is safe.
+    """
+    inner = cv2.erode(mask, np.ones((2 * _RIM_PX + 1, 2 * _RIM_PX + 1), np.uint8))
+    size = np.sqrt(score)
+    around = cv2.dilate(size * mask, np.ones((2 * _RIM_PX + 1, 2 * _RIM_PX + 1), np.uint8))
+    weak = (size < np.minimum(0.4 * around, _SURE)) & (inner == 0)
+    return np.where(weak, 0, mask).astype(np.uint8)
 
 
 class Finder:
@@ -126,9 +142,9 @@ class Finder:
                 back_chroma.append(expected)
                 chroma_score += (miss**2).astype(np.float32)
             score += (miss**2).astype(np.float32)
-        mask = self._hysteresis(score, near, rows, columns)
+        mask = _trimmed(self._hysteresis(score, near, rows, columns), score)
         self._drop_shadow(mask, planes[0][rows, columns], light, (rows, columns), seen_chroma, back_chroma)
-        return self._measure(self._solid(mask), rows, columns)
+        return self._measure(self._solid(mask, rows, columns), rows, columns)
 
     def _hysteresis(self, score: Singles, near: NDArray[np.uint8], rows: slice, columns: slice) -> NDArray[np.uint8]:
         """Pixels over the low level that touch one over the high level, inside the coarse blob's surroundings."""
@@ -185,8 +201,8 @@ class Finder:
         left = cv2.morphologyEx(mask, cv2.MORPH_OPEN, np.ones((3, 3), np.uint8))
         mask[band & (left == 0)] = 0
 
-    def _solid(self, mask: NDArray[np.uint8]) -> NDArray[np.uint8]:
-        """Close small gaps and fill small holes; drop crumbs."""
+    def _solid(self, mask: NDArray[np.uint8], rows: slice, columns: slice) -> NDArray[np.uint8]:
+        """Close small gaps and fill small holes; drop crumbs, and flat pieces on the ground (left-over shadow)."""
         scale = self.corridor.scale_px_m
         k = max(1, round(0.02 * scale)) * 2 + 1
         mask = cv2.morphologyEx(mask, cv2.MORPH_CLOSE, np.ones((k, k), np.uint8)).astype(np.uint8)
@@ -200,6 +216,13 @@ class Finder:
         count, labels, stats, _ = cv2.connectedComponentsWithStats(mask, connectivity=8)
         if count > 2:
             keep = stats[:, cv2.CC_STAT_AREA] >= 0.02 * stats[1:, cv2.CC_STAT_AREA].max()
+            middle = columns.start + stats[:, cv2.CC_STAT_LEFT] + stats[:, cv2.CC_STAT_WIDTH] // 2
+            ground = (
+                self.corridor.ground_v[np.clip(middle, 0, self.corridor.width_px - 1)] - self.corridor.top - rows.start
+            )
+            flat = stats[:, cv2.CC_STAT_HEIGHT] < 0.12 * scale
+            flat &= stats[:, cv2.CC_STAT_WIDTH] > 1.5 * stats[:, cv2.CC_STAT_HEIGHT]
+            keep &= ~(flat & (stats[:, cv2.CC_STAT_TOP] > ground - _SHADOW_BAND_M * scale))
             keep[0] = False
             mask = keep[labels].astype(np.uint8)
         return mask
