@@ -221,6 +221,13 @@ REGISTRY: Final[dict[str, Entry]] = {
         "in air ({body:.2f} m^2): it lumps the body's own losses into the air and is not aerodynamic.",
         "For the air alone read drag_force, which comes from body size.",
     ),
+    "table_errors": Entry(
+        "fit",
+        "info",
+        "Errors of the table were sized by its scatter about the best law ({sd:.3f} {unit}); an error of scale or clock "
+        "that all its rows share is not in the intervals.",
+        "Check the instrument's own calibration.",
+    ),
     "law_misses_curve": Entry(
         "fit",
         "warning",
@@ -349,6 +356,12 @@ FAILURES: Final[dict[str, Entry]] = {
         "serious",
         "{metres:.1f} m of running in {rows} rows; at least {least:g} m are needed for a law.",
         "Film a longer stretch.",
+    ),
+    "too_few_rows": Entry(
+        "fit",
+        "serious",
+        "The table has {rows} usable rows; at least {least} are needed.",
+        "Add splits or readings.",
     ),
     "no_law_fits": Entry(
         "fit",

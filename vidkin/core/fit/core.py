@@ -20,7 +20,6 @@ from vidkin.stages import Fit, Motion, Rep, Settings, Steps
 _SEED: Final = 20260101
 _LEAST_ROWS: Final = 12
 _LEAST_WAY_M: Final = 3.0
-_DISAGREES_SD: Final = 3.5
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -62,7 +61,7 @@ def fit_motion(motion: Motion, rep: Rep, *, steps: Steps | Failure, settings: Se
     rough = rough_of(motion, view)
     series = series_of(rows, PLAIN_WOBBLE, kernels)
     # The wobble is sized on the residuals of the most flexible law; every law then meets the same covariance.
-    probe = Problem(_forms(view, rough, drag)[0], series)
+    probe = Problem(forms(view, rough, drag)[0], series)
     first = probe.solve()
     if isinstance(first, NoSolution):
         return failure("no_law_fits", why=first.reason)
@@ -75,7 +74,8 @@ def fit_motion(motion: Motion, rep: Rep, *, steps: Steps | Failure, settings: Se
     return answers.with_film(fit, motion, steps, remarks=remarks, level=settings.level)
 
 
-def _forms(view: View, rough: Rough, drag: Drag | Failure) -> list[Form]:
+def forms(view: View, rough: Rough, drag: Drag | Failure) -> list[Form]:
+    """The laws that apply to a view."""
     if view.start == "standing":
         return standing_forms(np.array([rough.x0_m, rough.t0_s]), rough.v_end_mps, rough.tau_s, drag or None)
     return flying_forms(rough.x0_m, rough.t0_s, rough.v_start_mps)
@@ -85,7 +85,7 @@ def fit_series(
     series: Series, view: View, rep: Rep, *, rough: Rough, drag: Drag | Failure, settings: Settings
 ) -> Fit | Failure:
     """Every law of the view on one series; quantities, splits and curves from them."""
-    fitted = _solve_all(series, _forms(view, rough, drag))
+    fitted = _solve_all(series, forms(view, rough, drag))
     if not fitted.laws:
         return failure("no_law_fits", why=fitted.refused[0].reason if fitted.refused else "no law applies")
     by_name = {s.problem.form.name: s for s in fitted.laws}
@@ -107,19 +107,18 @@ def fit_series(
     )
 
 
-def _solve_all(series: Series, forms: list[Form]) -> _Fitted:
+def _solve_all(series: Series, candidates: list[Form]) -> _Fitted:
     rng = np.random.default_rng(_SEED)
     done: list[tuple[float, Solved]] = []
     refused: list[Failure] = []
-    for form in forms:
+    for form in candidates:
         problem = Problem(form, series)
         solution = problem.solve()
         if isinstance(solution, NoSolution):
             refused.append(failure("law_not_solved", law=form.name, why=solution.reason))
             continue
         free = int(np.count_nonzero(problem.decided_by_data))
-        cost = solution.cost if series.cov_known else series.t_s.size * float(np.log(solution.cost / series.t_s.size))
-        done.append((aicc(cost, max(series.t_s.size, free + 2), free), solved(problem, solution, rng)))
+        done.append((aicc(solution.cost, max(series.t_s.size, free + 2), free), solved(problem, solution, rng)))
     done.sort(key=lambda d: d[0])
     criteria = tuple(c for c, _ in done)
     weights = tuple(float(w) for w in akaike_weights(criteria)) if criteria else ()

@@ -21,7 +21,6 @@ _SLOW_S: Final = 0.35
 class Series:
     """Values to fit: `t_s` (N,), `y` (N,) positions [m] or speeds [m/s], `cov` (N, N) of their errors.
 
-    `cov_known` False: only the shape of `cov` is known and its size is taken from the residuals.
     `fixed_origin` True: the position at first movement is 0 by definition (splits from the start line).
     """
 
@@ -29,7 +28,6 @@ class Series:
     t_s: Array
     y: Array
     cov: Array
-    cov_known: bool
     fixed_origin: bool = False
 
 
@@ -123,4 +121,4 @@ def series_of(rows: Binned, wobble: Wobble, kernels: tuple[Array, Array]) -> Ser
     """Positions with their full covariance: white, shared, and the two wobbles."""
     cov = np.diag((wobble.white * rows.x_sd_m) ** 2 + 1e-8) + rows.shared_m @ rows.shared_m.T
     cov += wobble.periodic_m**2 * kernels[0] + wobble.slow_m**2 * kernels[1]
-    return Series(kind="position", t_s=rows.t_s, y=rows.x_m, cov=cov, cov_known=True)
+    return Series(kind="position", t_s=rows.t_s, y=rows.x_m, cov=cov)

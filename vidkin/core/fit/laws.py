@@ -104,7 +104,7 @@ class Problem:
         return solve(
             self.residual,
             self.form.start[self.free],
-            scale_by_residual=not self.series.cov_known,
+            scale_by_residual=False,
             starts=tuple(s[self.free] for s in starts),
         )
 
