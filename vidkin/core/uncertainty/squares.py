@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
+from contextlib import suppress
 from dataclasses import dataclass
 from functools import partial
 from typing import Final, Literal, TypeAlias
@@ -24,6 +25,9 @@ _STEP = 3e-4
 _SMALLEST = 1e-4
 #: A direction is called unfixed when the singular value of the column-scaled Jacobian is below this [-].
 RANK_LIMIT: Final = 1e-10
+#: Five-point derivatives: shifts in steps, and weights (textbook). Minus both is the backward one.
+_CENTRAL = np.array([[-2.0, -1.0, 1.0, 2.0], [1 / 12, -8 / 12, 8 / 12, -1 / 12]])
+_FORWARD = np.array([[0.0, 1.0, 2.0, 3.0, 4.0], [-25 / 12, 4.0, -3.0, 4 / 3, -1 / 4]])
 #: Converged: the Gauss-Newton step that is left, in units of sd, ...
 _STEP_LEFT_SD = 1e-2
 #: ... or relative to each parameter (data without scatter have no sd).
@@ -69,17 +73,21 @@ def numerical_jacobian(residual: Residual, parameters: Array, *, typical: Array 
     """d residual / d parameters (N, P) by five-point differences.
 
     The step is relative to each parameter; `typical` (P,) is a size to fall back on for one that is close to 0.
+    Central differences, or one-sided ones at an edge of the domain.
     """
     floor = np.ones_like(parameters) if typical is None else np.where(typical == 0, 1.0, np.abs(typical))
     columns = []
     for i, value in enumerate(parameters):
         h = _STEP * max(abs(value), _SMALLEST * floor[i])
-        at = []
-        for shift in (-2, -1, 1, 2):
-            moved = parameters.copy()
-            moved[i] = value + shift * h
-            at.append(residual(moved))
-        columns.append((at[0] - at[3] + 8 * (at[2] - at[1])) / (12 * h))
+        for stencil in (_CENTRAL, _FORWARD, -_FORWARD):
+            column = np.zeros(())
+            for shift, weight in stencil.T:
+                moved = parameters.copy()
+                moved[i] = value + shift * h
+                column = column + weight * residual(moved)
+            if np.all(np.isfinite(column)):
+                break
+        columns.append(column / h)
     return np.column_stack(columns)
 
 
@@ -93,7 +101,8 @@ def solve(
 ) -> Solution | NoSolution:
     """Least squares from several starts; the best end counts.
 
-    `residual` may return values that are not finite outside its domain: such points are avoided.
+    `residual` may return values that are not finite outside its domain: such points are avoided. An exception that it
+    raises is not caught.
 
     Parameters
     ----------
@@ -111,7 +120,6 @@ def solve(
     Solution, or a falsy NoSolution that says why: no start in the domain, too few values, or parameters that the
     data do not fix.
     """
-
     best: Array | None = None
     best_cost, slope = np.inf, jacobian
     with np.errstate(all="ignore"):
@@ -139,27 +147,46 @@ def sum_of_squares(residual: Residual, p: Array) -> float:
     return total if np.isfinite(total) else float("inf")
 
 
+class _OffDomain(Exception):  # noqa: N818 - a signal, not an error
+    """The derivative is not finite: the descent cannot go on from here."""
+
+
 def _descend(residual: Residual, slope: Jacobian, p: Array) -> Array:
-    """Trust-region descent, then Levenberg-Marquardt from where it ended (each gets out of traps of the other)."""
+    """Lowest point seen by a trust-region descent, then by Levenberg-Marquardt from there.
+
+    Each gets out of traps of the other. An exception of `residual` itself is not caught.
+    """
+    lowest, lowest_at = np.inf, p
+
+    def watched(q: Array) -> Array:
+        nonlocal lowest, lowest_at
+        r = residual(q)
+        cost = float(r @ r)
+        if cost < lowest:
+            lowest, lowest_at = cost, q.copy()
+        return r
+
+    def checked(q: Array) -> Array:
+        j = slope(q)
+        if not np.all(np.isfinite(j)):
+            raise _OffDomain
+        return j
+
     methods: tuple[Literal["trf", "lm"], ...] = ("trf", "lm")
     for method in methods:
-        try:
-            end = least_squares(
-                residual,
-                p,
-                jac=slope,
+        with suppress(_OffDomain, np.linalg.LinAlgError):
+            least_squares(
+                watched,
+                lowest_at,
+                jac=checked,
                 method=method,
                 x_scale="jac",
                 max_nfev=_MAX_EVALUATIONS,
                 ftol=_TOLERANCE,
                 xtol=_TOLERANCE,
                 gtol=_TOLERANCE,
-            ).x
-        except (ValueError, np.linalg.LinAlgError):  # a value that is not finite: the point so far stands
-            continue
-        if sum_of_squares(residual, end) <= sum_of_squares(residual, p):
-            p = end
-    return p
+            )
+    return lowest_at
 
 
 def _estimate(r: Array, jac: Array, p: Array, *, scaled: bool) -> Solution | NoSolution:
