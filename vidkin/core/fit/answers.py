@@ -10,7 +10,7 @@ import numpy as np
 from scipy.stats import norm
 
 from vidkin.core import models
-from vidkin.core.fit.derive import DRAWS, Solved, drawn, mixed, profiled, ratio_of_force
+from vidkin.core.fit.derive import DRAWS, Solved, drawn, mixed, mixed_band, profiled, ratio_of_force
 from vidkin.core.fit.laws import Drag
 from vidkin.core.fit.view import View
 from vidkin.notices import Failure, Notice, failure, notice
@@ -232,16 +232,19 @@ def splits(
         return ()
     reach = view.last_m - view.start_x_m
     distances = asked_m or tuple(np.arange(_SPLIT_STEP_M, reach, _SPLIT_STEP_M))
-    rows = []
-    for distance in (float(d) for d in distances if 0 < d <= reach):
+    lines = np.array([float(d) for d in distances if 0 < d <= reach])
+    if lines.size == 0:
+        return ()
 
-        def when(law: models.Law, q: Array, line: float = view.start_x_m + distance) -> float:
-            return float(law.time_at(line - q[0]))
+    def when(law: models.Law, q: Array) -> Array:
+        return np.asarray(law.time_at(view.start_x_m + lines - q[0]))
 
-        got = mixed(laws, weights, "split", when, unit="s", level=level)
-        if got.low is not None and got.high is not None:
-            rows.append(Split(distance_m=distance, time_s=got.value, low_s=got.low, high_s=got.high))
-    return tuple(rows)
+    band = mixed_band(laws, weights, when, level=level)
+    return tuple(
+        Split(distance_m=float(d), time_s=float(t), low_s=float(low), high_s=float(high))
+        for d, t, low, high, held in zip(lines, band.value, band.low, band.high, band.held, strict=True)
+        if held
+    )
 
 
 def with_film(fit: Fit, motion: Motion, steps: Steps | Failure, *, remarks: tuple[Notice, ...], level: float) -> Fit:

@@ -12,7 +12,7 @@ from vidkin.core.fit.body import drag_of
 from vidkin.core.fit.data import PLAIN_WOBBLE, Series, binned, estimate_wobble, series_of, wobble_kernels
 from vidkin.core.fit.derive import Solved, curves, law_fit, solved
 from vidkin.core.fit.laws import Drag, Form, Problem, flying_forms, standing_forms
-from vidkin.core.fit.view import Rough, View, awake, rough_of, view_of
+from vidkin.core.fit.view import Rough, View, restlessness, rough_of, view_of
 from vidkin.core.uncertainty import NoSolution, aicc, akaike_weights, numerical_jacobian
 from vidkin.notices import Failure, failure
 from vidkin.stages import Fit, Motion, Rep, Settings, Steps
@@ -56,8 +56,8 @@ def fit_motion(motion: Motion, rep: Rep, *, steps: Steps | Failure, settings: Se
     view = view_of(motion, rep.lane.start_x_m)
     drag, remarks = drag_of(rep.athlete, rep.air)
     rows = binned(motion)
-    still = awake(rows.t_s, rows.x_m) if view.start == "standing" else np.ones(rows.t_s.size)
-    kernels = wobble_kernels(rows.t_s, rate_hz=motion.step_rate_hz, awake=still)
+    unrest = restlessness(rows.t_s, rows.x_m) if view.start == "standing" else np.ones(rows.t_s.size)
+    kernels = wobble_kernels(rows.t_s, rate_hz=motion.step_rate_hz, unrest=unrest)
     rough = rough_of(motion, view)
     series = series_of(rows, PLAIN_WOBBLE, kernels)
     # The wobble is sized on the residuals of the most flexible law; every law then meets the same covariance.

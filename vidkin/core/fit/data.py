@@ -70,14 +70,14 @@ def binned(motion: Motion) -> Binned:
     return Binned(mean(motion.t_s), mean(motion.x_m), np.sqrt(mean(motion.x_sd_m**2) / count), mean(motion.shared_m))
 
 
-def wobble_kernels(t_s: Array, *, rate_hz: float, awake: Array) -> tuple[Array, Array]:
+def wobble_kernels(t_s: Array, *, rate_hz: float, unrest: Array) -> tuple[Array, Array]:
     """Unit covariances (N, N) of the step-periodic and the slow wobble.
 
     cos(2 pi f dt) exp(-(dt f/3)^2/2): in rhythm over about three steps; exp(-(dt/0.35 s)^2/2): posture. Our own
-    model of what simulated and real silhouettes do. `awake` (N,) 0 while the runner stands still, 1 in motion.
+    model of what simulated and real silhouettes do. `unrest` (N,) scales both.
     """
     dt = t_s[:, None] - t_s[None, :]
-    both = awake[:, None] * awake[None, :]
+    both = unrest[:, None] * unrest[None, :]
     rhythm = np.cos(2 * np.pi * rate_hz * dt) * np.exp(-0.5 * (dt * rate_hz / _RHYTHM_STEPS) ** 2)
     return both * rhythm, both * np.exp(-0.5 * (dt / _SLOW_S) ** 2)
 

@@ -13,9 +13,9 @@ from vidkin.constants import G_MPS2
 from vidkin.core import models
 from vidkin.core.fit.laws import Drag, Problem
 from vidkin.core.uncertainty import Solution, draw, percentile_interval, profile_interval
-from vidkin.stages import Array, Curves, LawFit, Quantity
+from vidkin.stages import Array, Bools, Curves, LawFit, Quantity
 
-DRAWS: Final = 800
+DRAWS: Final = 500
 _CURVE_STEP_S: Final = 0.01
 _RATIO_FROM_S: Final = 0.3
 
@@ -102,6 +102,42 @@ def _safe(of: Callable[[models.Law, Array], float], law: models.Law | None, q: A
         return float("nan")
 
 
+@dataclass(frozen=True, slots=True, kw_only=True)
+class Band:
+    """Values (K,) with interval ends (K,); `held` (K,) False where the fit leaves a value undefined."""
+
+    value: Array
+    low: Array
+    high: Array
+    held: Bools
+
+
+def mixed_band(
+    laws: Mapping[str, Solved], weights: Mapping[str, float], of: Callable[[models.Law, Array], Array], *, level: float
+) -> Band:
+    """Any functions of the law: every law speaks in proportion to its Akaike weight, so doubt between laws widens."""
+    first = next(iter(laws.values()))
+    value = np.asarray(of(first.law, first.q))
+    rows = []
+    for key, s in laws.items():
+        for q in s.draws[: round(weights[key] * len(s.draws))]:
+            law = s.problem.form.law(q)
+            try:
+                rows.append(np.full(value.shape, np.nan) if law is None else np.asarray(of(law, q)))
+            except ValueError:
+                rows.append(np.full(value.shape, np.nan))
+    table = np.array(rows)
+    good = np.isfinite(table)
+    held = good.mean(axis=0) >= 0.9
+    ends = [percentile_interval(table[good[:, k], k], level=level) if held[k] else None for k in range(value.size)]
+    return Band(
+        value=value,
+        low=np.array([v if e is None else e.low for v, e in zip(value, ends, strict=True)]),
+        high=np.array([v if e is None else e.high for v, e in zip(value, ends, strict=True)]),
+        held=held,
+    )
+
+
 def mixed(
     laws: Mapping[str, Solved],
     weights: Mapping[str, float],
@@ -111,27 +147,19 @@ def mixed(
     unit: str,
     level: float,
 ) -> Quantity:
-    """As `drawn`, but every law speaks in proportion to its Akaike weight: doubt between laws widens the interval."""
-    first = next(iter(laws.values()))
-    values = []
-    for key, s in laws.items():
-        count = round(weights[key] * len(s.draws))
-        values += [_safe(of, s.problem.form.law(q), q) for q in s.draws[:count]]
-    kept = np.array(values)[np.isfinite(values)]
-    value = of(first.law, first.q)
-    if kept.size < 0.9 * len(values):
-        return Quantity(
-            name=name,
-            value=value,
-            low=None,
-            high=None,
-            unit=unit,
-            method="draws",
-            level=level,
-            why_no_interval="it is not defined over the range that the fit leaves open",
-        )
-    found = percentile_interval(kept, level=level)
-    return Quantity(name=name, value=value, low=found.low, high=found.high, unit=unit, method="draws", level=level)
+    """As `drawn`, over all laws (`mixed_band`)."""
+    band = mixed_band(laws, weights, lambda law, q: np.array([of(law, q)]), level=level)
+    held = bool(band.held[0])
+    return Quantity(
+        name=name,
+        value=float(band.value[0]),
+        low=float(band.low[0]) if held else None,
+        high=float(band.high[0]) if held else None,
+        unit=unit,
+        method="draws",
+        level=level,
+        why_no_interval="" if held else "it is not defined over the range that the fit leaves open",
+    )
 
 
 def ratio_of_force(

@@ -12,6 +12,9 @@ from vidkin.stages import Array, Motion
 _STILL_MPS: Final = 0.6
 _STILL_LEAST_S: Final = 0.05
 _STIR_M: Final = 0.08
+_STIR_S: Final = 0.1
+_UNFOLDING: Final = 1.5
+_UNFOLDING_S: Final = 0.5
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -52,14 +55,20 @@ def view_of(motion: Motion, start_x_m: float) -> View:
     )
 
 
-def awake(t_s: Array, x_m: Array) -> Array:
-    """0 while the runner stands still, 1 in motion, ramped over the first centimetres (N,)."""
+def restlessness(t_s: Array, x_m: Array) -> Array:
+    """How strongly the silhouette may wobble about the centre of mass, against its size in upright running (N,).
+
+    Next to nothing while the runner stands still; twice as much in the first step, when arms leave the ground,
+    legs unfold and the outline changes most, easing off over half a second.
+    """
     still = x_m[: max(3, int(np.argmax(x_m - x_m[0] > _STIR_M)) // 2)]
     way = (x_m - float(np.median(still))) / _STIR_M
     begun = np.maximum.accumulate(np.clip(way, 0.0, 1.0))
-    # The wobble begins with the limbs, a little before the trunk has moved.
-    lead = np.interp(t_s + 0.05, t_s, begun)
-    return np.asarray(np.maximum(lead, 0.05))
+    # The limbs stir a little before the trunk has moved.
+    lead = np.interp(t_s + _STIR_S, t_s, begun)
+    first = float(t_s[int(np.argmax(lead > 0.5))])
+    unfolding = 1.0 + _UNFOLDING * np.exp(-np.maximum(t_s - first, 0.0) / _UNFOLDING_S)
+    return np.asarray(np.maximum(lead * unfolding, 0.05))
 
 
 def rough_of(motion: Motion, view: View) -> Rough:

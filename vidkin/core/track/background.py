@@ -10,7 +10,7 @@ import cv2
 import numpy as np
 from numpy.typing import NDArray
 
-from vidkin.stages import Array, Frame
+from vidkin.stages import Frame
 
 Planes: TypeAlias = tuple[NDArray[np.uint8], NDArray[np.uint8], NDArray[np.uint8]]
 Singles: TypeAlias = NDArray[np.float32]
@@ -21,6 +21,7 @@ _BYTES: Final = 120_000_000
 _LEAST_NOISE: Final = 0.8
 _ROWS_AT_ONCE: Final = 32
 _NOISE_PAIRS: Final = 12
+_DRIFT_PIXELS: Final = 1500
 #: The majority is overruled only where its outline stands out by this factor.
 _CLEARLY: Final = 1.25
 _TEXTURE_PX: Final = 0.25
@@ -203,17 +204,19 @@ def _edge_strength(picture: Singles, rim: NDArray[np.uint8]) -> float:
     return float(size[rim > 0].mean()) if np.any(rim) else 0.0
 
 
-def drift(small: Singles, small_background: Singles) -> Array:
-    """Gain and offset (2,) that bring the background to a frame's exposure: robust line through grey levels."""
-    b, y = small_background.ravel().astype(np.float64), small.ravel().astype(np.float64)
+def drift(small: Singles, small_background: Singles) -> tuple[float, float]:
+    """Gain and offset that bring the background to a frame's exposure: a robust line through grey levels."""
+    stride = max(1, small.size // _DRIFT_PIXELS)
+    b, y = small_background.ravel()[::stride], small.ravel()[::stride]
     keep = np.ones(b.size, dtype=bool)
     gain, offset = 1.0, 0.0
     for _ in range(3):
-        if np.count_nonzero(keep) < 50 or np.ptp(b[keep]) < 8:
-            return np.array([1.0, float(np.median(y - b))])
-        gain, offset = np.polyfit(b[keep], y[keep], 1)
+        bk, yk = b[keep], y[keep]
+        if bk.size < 50 or float(np.ptp(bk)) < 8:
+            return 1.0, float(np.median(y - b))
+        centred = bk - bk.mean()
+        gain = float(centred @ yk / (centred @ centred))
+        offset = float(yk.mean() - gain * bk.mean())
         miss = np.abs(y - gain * b - offset)
         keep = miss <= max(2.0, 2.5 * float(np.median(miss)))
-    if not 0.7 < gain < 1.4:
-        return np.array([1.0, float(np.median(y - b))])
-    return np.array([gain, offset])
+    return (gain, offset) if 0.7 < gain < 1.4 else (1.0, float(np.median(y - b)))
