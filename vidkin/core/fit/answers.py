@@ -23,6 +23,10 @@ _DRAG_WAY_M: Final = 20.0
 _PLATEAU_SHARE: Final = 0.55
 _LUMPED: Final = 1.8
 _DISAGREES_SD: Final = 3.5
+_LAST_STEPS: Final = 5
+#: What a touch-down and a foot place are worth (simulated scenes): sd.
+_CONTACT_S: Final = 0.015
+_FOOT_M: Final = 0.08
 
 
 @dataclass(slots=True)
@@ -255,30 +259,7 @@ def with_film(fit: Fit, motion: Motion, steps: Steps | Failure, *, remarks: tupl
     if isinstance(steps, Failure):
         refused = (*refused, failure("no_steps", why=steps.reason))
     else:
-        rate, sd = _rate_at_top(steps)
-        half = float(norm.ppf(0.5 + level / 2)) * sd
-        length = top.value / rate
-        width = float(np.hypot(half / rate, 0.5 * ((top.high or top.value) - (top.low or top.value)) / top.value))
-        for q in (
-            Quantity(
-                name="step_rate",
-                value=rate,
-                low=rate - half,
-                high=rate + half,
-                unit="Hz",
-                method="contacts",
-                level=level,
-            ),
-            Quantity(
-                name="step_length",
-                value=length,
-                low=length * (1 - width),
-                high=length * (1 + width),
-                unit="m",
-                method="top_speed / step_rate",
-                level=level,
-            ),
-        ):
+        for q in _steps_at_top(steps, top, level=level):
             found[q.name] = q
     law = fit.laws[fit.law]
     here = motion.inside & (motion.t_s > law.parameters["t0"] + motion.window_s)
@@ -289,13 +270,26 @@ def with_film(fit: Fit, motion: Motion, steps: Steps | Failure, *, remarks: tupl
     return replace(fit, quantities=found, refused=refused, notices=(*remarks, *fit.notices, *extra))
 
 
-def _rate_at_top(steps: Steps) -> tuple[float, float]:
-    """Step rate over the last steps in view and its sd [Hz]; the whole pass where contacts are few."""
-    gaps = np.diff(steps.on_s)
-    near = gaps[np.abs(gaps * steps.step_rate_hz - 1) < 0.25][-5:]
-    if near.size < 3:
-        return steps.step_rate_hz, steps.step_rate_sd_hz
-    period = float(near.mean())
-    # Touch-downs are seen to a frame or so; the sum of neighbouring gaps keeps only the two outer ones.
-    sd = max(float(near.std(ddof=1)) / near.size, 0.008 / near.size)
-    return 1 / period, sd / period**2
+def _steps_at_top(steps: Steps, top: Quantity, *, level: float) -> tuple[Quantity, ...]:
+    """Step rate and length over the last steps in view: from touch-downs and foot places, or, where contacts are
+    few, the whole pass's rate and top speed over it."""
+    z = float(norm.ppf(0.5 + level / 2))
+    gaps, ways = np.diff(steps.on_s), np.diff(steps.x_m)
+    clean = np.flatnonzero(np.abs(gaps * steps.step_rate_hz - 1) < 0.3)[-_LAST_STEPS:]
+    if clean.size >= 3:
+        method = f"last {clean.size} steps in view"
+        period, length = float(gaps[clean].mean()), float(ways[clean].mean())
+        # Neighbouring gaps share a contact, so errors of inner contacts cancel: the mean is good to the outer two.
+        period_sd = _CONTACT_S * np.sqrt(2) / clean.size
+        rate, rate_sd = 1 / period, period_sd / period**2
+        scale = 0.0 if top.low is None or top.high is None else 0.5 * (top.high - top.low) / (z * top.value)
+        length_sd = float(np.hypot(_FOOT_M * np.sqrt(2) / clean.size, scale * length))
+    else:
+        method = "whole pass"
+        rate, rate_sd = steps.step_rate_hz, steps.step_rate_sd_hz
+        length = top.value / rate
+        length_sd = length * rate_sd / rate
+    return tuple(
+        Quantity(name=n, value=v, low=v - z * sd, high=v + z * sd, unit=u, method=method, level=level)
+        for n, v, sd, u in (("step_rate", rate, rate_sd, "Hz"), ("step_length", length, length_sd, "m"))
+    )

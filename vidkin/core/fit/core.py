@@ -9,7 +9,7 @@ import numpy as np
 
 from vidkin.core.fit import answers
 from vidkin.core.fit.body import drag_of
-from vidkin.core.fit.data import PLAIN_WOBBLE, Series, binned, estimate_wobble, series_of, wobble_kernels
+from vidkin.core.fit.data import PLAIN_WOBBLE, Series, at_positions, binned, estimate_wobble, series_of, wobble_kernels
 from vidkin.core.fit.derive import Solved, curves, law_fit, solved
 from vidkin.core.fit.laws import Drag, Form, Problem, flying_forms, standing_forms
 from vidkin.core.fit.view import Rough, View, restlessness, rough_of, view_of
@@ -59,15 +59,17 @@ def fit_motion(motion: Motion, rep: Rep, *, steps: Steps | Failure, settings: Se
     unrest = restlessness(rows.t_s, rows.x_m) if view.start == "standing" else np.ones(rows.t_s.size)
     kernels = wobble_kernels(rows.t_s, rate_hz=motion.step_rate_hz, unrest=unrest)
     rough = rough_of(motion, view)
-    series = series_of(rows, PLAIN_WOBBLE, kernels)
+    series = series_of(at_positions(rows, rows.smooth_m), PLAIN_WOBBLE, kernels)
     # The wobble is sized on the residuals of the most flexible law; every law then meets the same covariance.
     probe = Problem(forms(view, rough, drag)[0], series)
     first = probe.solve()
     if isinstance(first, NoSolution):
         return failure("no_law_fits", why=first.reason)
     slopes = numerical_jacobian(lambda p: probe.predicted(probe.full(p)), first.parameters)
-    residual = rows.x_m - probe.predicted(probe.full(first.parameters))
-    series = series_of(rows, estimate_wobble(rows, residual, slopes[:, probe.decided_by_data], kernels), kernels)
+    smooth = probe.predicted(probe.full(first.parameters))
+    rows = at_positions(rows, smooth)
+    wobble = estimate_wobble(rows, rows.x_m - smooth, slopes[:, probe.decided_by_data], kernels)
+    series = series_of(rows, wobble, kernels)
     fit = fit_series(series, view, rep, rough=rough, drag=drag, settings=settings)
     if not fit:
         return fit

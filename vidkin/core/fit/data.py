@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Final, Literal
 
 import numpy as np
@@ -15,6 +15,7 @@ from vidkin.stages import Array, Motion
 _RATE_HZ: Final = 50.0
 _RHYTHM_STEPS: Final = 3.0
 _SLOW_S: Final = 0.35
+_COLUMN_DEGREE: Final = 5
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -42,12 +43,13 @@ class Wobble:
 
 @dataclass(frozen=True, slots=True)
 class Binned:
-    """A motion's rows, averaged over short spans."""
+    """A motion's rows, averaged over short spans; `smooth_m` the Savitzky-Golay position."""
 
     t_s: Array
     x_m: Array
     x_sd_m: Array
     shared_m: Array
+    smooth_m: Array
 
 
 #: Before anything is known of this runner's silhouette.
@@ -67,7 +69,27 @@ def binned(motion: Motion) -> Binned:
     def mean(values: Array) -> Array:
         return np.asarray((np.add.reduceat(values, edges, axis=0).T / count).T)
 
-    return Binned(mean(motion.t_s), mean(motion.x_m), np.sqrt(mean(motion.x_sd_m**2) / count), mean(motion.shared_m))
+    return Binned(
+        t_s=mean(motion.t_s),
+        x_m=mean(motion.x_m),
+        x_sd_m=np.sqrt(mean(motion.x_sd_m**2) / count),
+        shared_m=mean(motion.shared_m),
+        smooth_m=mean(motion.smooth_x_m),
+    )
+
+
+def at_positions(rows: Binned, x_m: Array) -> Binned:
+    """The same rows with the shared-error columns taken at smooth positions `x_m` (N,) instead of the measured ones.
+
+    A column that grows with position and is read off the NOISY position carries that noise; the fit then prefers a
+    smaller scale (D'Agostini, Nucl. Instrum. Methods A 346 (1994) 306, for a shared normalisation; from memory). Each
+    column is a smooth function of position along the lane, so a polynomial through its rows is read at `x_m`.
+    """
+    centre, half = float(rows.x_m.mean()), 0.5 * float(np.ptp(rows.x_m))
+    degree = min(_COLUMN_DEGREE, rows.x_m.size // 4)
+    measured, smooth = (np.polynomial.legendre.legvander((x - centre) / half, degree) for x in (rows.x_m, x_m))
+    coefficients = np.linalg.lstsq(measured, rows.shared_m, rcond=None)[0]
+    return replace(rows, shared_m=smooth @ coefficients)
 
 
 def wobble_kernels(t_s: Array, *, rate_hz: float, unrest: Array) -> tuple[Array, Array]:
