@@ -217,8 +217,8 @@ REGISTRY: Final[dict[str, Entry]] = {
     "lumped_drag": Entry(
         "fit",
         "warning",
-        "Power and drag fitted together give an effective drag area of {area:.2f} m^2, {ratio:.1f} times that of the body "
-        "in air ({body:.2f} m^2): it lumps the body's own losses into the air and is not aerodynamic.",
+        "Power and drag fitted together give an effective drag area of {area:.2f} m², {ratio:.1f} times that of the body "
+        "in air ({body:.2f} m²): it lumps the body's own losses into the air and is not aerodynamic.",
         "For the air alone read drag_force, which comes from body size.",
     ),
     "table_errors": Entry(

@@ -12,6 +12,7 @@ from typing import Final
 import numpy as np
 
 from vidkin.core import optics
+from vidkin.core.uncertainty import wobble_kernels
 from vidkin.notices import Failure, Notice, failure, notice
 from vidkin.stages import CAMERA_PARAMETERS, Array, Bools, Camera, Lane, Motion, Settings, Steps, Track
 
@@ -24,6 +25,7 @@ _POSTURE_M: Final = 0.05
 _POSTURE_S: Final = 0.8
 _LANE_SD_M: Final = 0.15
 _EXTRAPOLATED_M: Final = 3.0
+_LEAST_WOBBLE_M: Final = 0.008
 
 
 @dataclass(frozen=True, slots=True)
@@ -79,17 +81,6 @@ def savitzky_golay(t_s: Array, *, window_s: float, order: int = _ORDER) -> Smoot
     return Smoother(out[0], out[1], out[2], inside)
 
 
-def wobble_covariance(t_s: Array, *, sd_m: float, rate_hz: float, drift_sd_m: float, drift_s: float = 0.35) -> Array:
-    """Covariance (N, N) of a silhouette point about the centre of mass [m^2].
-
-    A step-periodic part, sd^2 cos(2 pi f dt) exp(-(dt f / 3)^2 / 2), that stays in rhythm for about three steps, and a
-    slow part, drift_sd^2 exp(-(dt / drift_s)^2 / 2). Our own model of what the simulator and footage show.
-    """
-    dt = t_s[:, None] - t_s[None, :]
-    rhythm = sd_m**2 * np.cos(2 * np.pi * rate_hz * dt) * np.exp(-0.5 * (dt * rate_hz / 3.0) ** 2)
-    return np.asarray(rhythm + drift_sd_m**2 * np.exp(-0.5 * (dt / drift_s) ** 2))
-
-
 def measure(
     track: Track, camera: Camera, lane: Lane, *, steps: Steps | Failure, settings: Settings | None = None
 ) -> Motion | Failure:
@@ -129,9 +120,10 @@ def measure(
     names = (*(f"camera {i + 1}" for i in range(len(CAMERA_PARAMETERS))), "lateral position", "posture")
     smoother = savitzky_golay(t_s, window_s=window)
     smooth = smoother.position @ x_m
-    periodic, drift = _wobble_size(t_s, x_m, rate, x_sd)
-    noise = np.diag(x_sd**2) + wobble_covariance(t_s, sd_m=periodic, rate_hz=rate, drift_sd_m=drift)
-    noise += shared @ shared.T
+    noise = np.diag(x_sd**2) + shared @ shared.T
+    sizes = _wobble_sizes(t_s, x_m, rate, x_sd)
+    for wobble_m, kernel in zip(sizes, wobble_kernels(t_s, rate_hz=rate), strict=True):
+        noise += wobble_m**2 * kernel
     bias = _curvature_bias(t_s, x_m, window)
     v_sd = np.sqrt(np.einsum("ij,jk,ik->i", smoother.velocity, noise, smoother.velocity) + bias**2)
     a_sd = np.sqrt(np.maximum(np.einsum("ij,jk,ik->i", smoother.acceleration, noise, smoother.acceleration), 0.0))
@@ -172,16 +164,16 @@ def _posture(t_s: Array, x_m: Array) -> Array:
     return np.asarray(_POSTURE_M * (1 - np.exp(-np.maximum(t_s - start, 0.0) / _POSTURE_S)))
 
 
-def _wobble_size(t_s: Array, x_m: Array, rate_hz: float, x_sd: Array) -> tuple[float, float]:
-    """Sd [m] of the step-periodic and of the slow wobble, from what the window's polynomial leaves over.
+def _wobble_sizes(t_s: Array, x_m: Array, rate_hz: float, x_sd: Array) -> tuple[float, float, float, float]:
+    """Sd [m] of the wobble, in the order of `wobble_kernels`, from what the window leaves over.
 
-    The periodic part is fitted (sine and cosine per three steps); the slow part cannot be told from motion by
-    itself and is taken as a third of the periodic one, at least 0.8 cm.
+    The step rhythm is fitted (sine and cosine over three steps at a time); the others cannot be told from motion by
+    themselves and are taken as half of it.
     """
-    long = savitzky_golay(t_s, window_s=_STEPS_IN_WINDOW / rate_hz)
-    left = x_m - long.position @ x_m
+    smooth = savitzky_golay(t_s, window_s=_STEPS_IN_WINDOW / rate_hz)
+    left = x_m - smooth.position @ x_m
     phase = 2 * np.pi * rate_hz * (t_s - t_s[0])
-    power, count = 0.0, 0
+    powers = []
     span = 3.0 / rate_hz
     for start in np.arange(t_s[0], t_s[-1] - 0.5 * span, span):
         part = (t_s >= start) & (t_s < start + span)
@@ -189,10 +181,10 @@ def _wobble_size(t_s: Array, x_m: Array, rate_hz: float, x_sd: Array) -> tuple[f
             continue
         basis = np.column_stack([np.cos(phase[part]), np.sin(phase[part]), np.ones(np.count_nonzero(part))])
         c = np.linalg.lstsq(basis, left[part], rcond=None)[0]
-        power += 0.5 * float(c[0] ** 2 + c[1] ** 2)
-        count += 1
-    periodic = float(np.sqrt(power / count)) if count else float(np.std(left))
-    return max(periodic, float(np.median(x_sd)), 0.004), max(periodic / 3, 0.008)
+        powers.append(0.5 * float(c[0] ** 2 + c[1] ** 2))
+    step = float(np.sqrt(np.mean(powers))) if powers else float(np.std(left))
+    step = max(step, float(np.median(x_sd)), _LEAST_WOBBLE_M)
+    return step, 0.5 * step, 0.5 * step, 0.5 * step
 
 
 def _curvature_bias(t_s: Array, x_m: Array, window_s: float) -> Array:

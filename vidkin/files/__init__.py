@@ -1,0 +1,1 @@
+"""The shell around the core: video, sheets, layouts, result folders, exports and tables."""

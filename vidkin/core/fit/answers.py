@@ -14,7 +14,7 @@ from vidkin.core.fit.derive import DRAWS, Solved, drawn, mixed, mixed_band, prof
 from vidkin.core.fit.laws import Drag
 from vidkin.core.fit.view import View
 from vidkin.notices import Failure, Notice, failure, notice
-from vidkin.stages import Array, Fit, Motion, Quantity, Split, Steps
+from vidkin.stages import Array, Fit, LawFit, Motion, Quantity, Split, Steps
 
 _SPLIT_STEP_M: Final = 5.0
 #: A drag constant can be told from power only where this much of the run is in view [m].
@@ -23,7 +23,10 @@ _DRAG_WAY_M: Final = 20.0
 _PLATEAU_SHARE: Final = 0.55
 _LUMPED: Final = 1.8
 _DISAGREES_SD: Final = 3.5
-_LAST_STEPS: Final = 5
+_LEAST_STEPS: Final = 3
+_NEAR_TOP: Final = 0.97
+_MEAN_NEAR_TOP: Final = 0.985
+_EDGE_M: Final = 0.12
 #: What a touch-down and a foot place are worth (simulated scenes): sd.
 _CONTACT_S: Final = 0.015
 _FOOT_M: Final = 0.08
@@ -81,7 +84,7 @@ def _fastest(law: models.Law, q: Array, view: View) -> tuple[float, float]:
     """Highest speed in view, and its clip time. The laws are monotonic, so it is at one of the ends."""
     ends = np.array([max(view.first_s, q[1]), view.last_s])
     speeds = law.speed(ends - q[1])
-    best = int(np.argmax(speeds))
+    best = 0 if speeds[0] > speeds[1] else 1
     return float(speeds[best]), float(ends[best])
 
 
@@ -92,10 +95,16 @@ def _top_speed(laws: Mapping[str, Solved], weights: Mapping[str, float], view: V
     def place(law: models.Law, q: Array) -> float:
         return float(q[0] + law.position(_fastest(law, q, view)[1] - q[1]))
 
-    return [
-        mixed(laws, weights, "top_speed", speed, unit="m/s", level=level),
-        mixed(laws, weights, "top_speed_at", place, unit="m", level=level),
-    ]
+    at = mixed(laws, weights, "top_speed_at", place, unit="m", level=level)
+    if at.low is not None and at.high is not None:
+        # Where the body is last whole is known to a foot or a hand that the outline missed.
+        edge = float(norm.ppf(0.5 + level / 2)) * _EDGE_M
+        at = replace(
+            at,
+            low=at.value - float(np.hypot(at.value - at.low, edge)),
+            high=at.value + float(np.hypot(at.high - at.value, edge)),
+        )
+    return [mixed(laws, weights, "top_speed", speed, unit="m/s", level=level), at]
 
 
 def _start_quantities(
@@ -259,7 +268,7 @@ def with_film(fit: Fit, motion: Motion, steps: Steps | Failure, *, remarks: tupl
     if isinstance(steps, Failure):
         refused = (*refused, failure("no_steps", why=steps.reason))
     else:
-        for q in _steps_at_top(steps, top, level=level):
+        for q in _steps_at_top(steps, top, fit.laws[fit.law], level=level):
             found[q.name] = q
     law = fit.laws[fit.law]
     here = motion.inside & (motion.t_s > law.parameters["t0"] + motion.window_s)
@@ -270,26 +279,32 @@ def with_film(fit: Fit, motion: Motion, steps: Steps | Failure, *, remarks: tupl
     return replace(fit, quantities=found, refused=refused, notices=(*remarks, *fit.notices, *extra))
 
 
-def _steps_at_top(steps: Steps, top: Quantity, *, level: float) -> tuple[Quantity, ...]:
-    """Step rate and length over the last steps in view: from touch-downs and foot places, or, where contacts are
-    few, the whole pass's rate and top speed over it."""
+def _steps_at_top(steps: Steps, top: Quantity, law: LawFit, *, level: float) -> tuple[Quantity, ...]:
+    """Step rate and length at top speed: from touch-downs and foot places of the steps run near it, or, where
+    contacts are few, the whole pass's rate and top speed over it."""
     z = float(norm.ppf(0.5 + level / 2))
     gaps, ways = np.diff(steps.on_s), np.diff(steps.x_m)
-    clean = np.flatnonzero(np.abs(gaps * steps.step_rate_hz - 1) < 0.3)[-_LAST_STEPS:]
-    if clean.size >= 3:
-        method = f"last {clean.size} steps in view"
-        period, length = float(gaps[clean].mean()), float(ways[clean].mean())
+    speeds = np.interp(steps.on_s[:-1] + 0.5 * gaps, law.t_s, law.v_mps)
+    clean = np.abs(gaps * steps.step_rate_hz - 1) < 0.3
+    chosen = np.flatnonzero(clean & (speeds >= _NEAR_TOP * top.value))
+    if chosen.size < _LEAST_STEPS:
+        chosen = np.flatnonzero(clean)[-_LEAST_STEPS:]
+    scale = 0.0 if top.low is None or top.high is None else 0.5 * (top.high - top.low) / (z * top.value)
+    if chosen.size >= _LEAST_STEPS:
+        n, method = chosen.size, f"{chosen.size} steps near top speed"
+        period = float(gaps[chosen].mean())
         # Neighbouring gaps share a contact, so errors of inner contacts cancel: the mean is good to the outer two.
-        period_sd = _CONTACT_S * np.sqrt(2) / clean.size
+        period_sd = _CONTACT_S * np.sqrt(2) / n
         rate, rate_sd = 1 / period, period_sd / period**2
-        scale = 0.0 if top.low is None or top.high is None else 0.5 * (top.high - top.low) / (z * top.value)
-        length_sd = float(np.hypot(_FOOT_M * np.sqrt(2) / clean.size, scale * length))
+        # Steps run a little below top speed are that much shorter.
+        length = float(ways[chosen].mean()) * max(1.0, _MEAN_NEAR_TOP * top.value / float(speeds[chosen].mean()))
+        length_sd = float(np.hypot(_FOOT_M * np.sqrt(2) / n, scale * length))
     else:
         method = "whole pass"
         rate, rate_sd = steps.step_rate_hz, steps.step_rate_sd_hz
         length = top.value / rate
-        length_sd = length * rate_sd / rate
+        length_sd = length * float(np.hypot(rate_sd / rate, scale))
     return tuple(
-        Quantity(name=n, value=v, low=v - z * sd, high=v + z * sd, unit=u, method=method, level=level)
-        for n, v, sd, u in (("step_rate", rate, rate_sd, "Hz"), ("step_length", length, length_sd, "m"))
+        Quantity(name=name, value=v, low=v - z * sd, high=v + z * sd, unit=u, method=method, level=level)
+        for name, v, sd, u in (("step_rate", rate, rate_sd, "Hz"), ("step_length", length, length_sd, "m"))
     )

@@ -9,11 +9,11 @@ import numpy as np
 
 from vidkin.core.fit import answers
 from vidkin.core.fit.body import drag_of
-from vidkin.core.fit.data import PLAIN_WOBBLE, Series, at_positions, binned, estimate_wobble, series_of, wobble_kernels
+from vidkin.core.fit.data import PLAIN_WOBBLE, Series, at_positions, binned, estimate_wobble, series_of, unrestful
 from vidkin.core.fit.derive import Solved, curves, law_fit, solved
 from vidkin.core.fit.laws import Drag, Form, Problem, flying_forms, standing_forms
 from vidkin.core.fit.view import Rough, View, restlessness, rough_of, view_of
-from vidkin.core.uncertainty import NoSolution, aicc, akaike_weights, numerical_jacobian
+from vidkin.core.uncertainty import NoSolution, aicc, akaike_weights, numerical_jacobian, wobble_kernels
 from vidkin.notices import Failure, failure
 from vidkin.stages import Fit, Motion, Rep, Settings, Steps
 
@@ -57,7 +57,7 @@ def fit_motion(motion: Motion, rep: Rep, *, steps: Steps | Failure, settings: Se
     drag, remarks = drag_of(rep.athlete, rep.air)
     rows = binned(motion)
     unrest = restlessness(rows.t_s, rows.x_m) if view.start == "standing" else np.ones(rows.t_s.size)
-    kernels = wobble_kernels(rows.t_s, rate_hz=motion.step_rate_hz, unrest=unrest)
+    kernels = unrestful(wobble_kernels(rows.t_s, rate_hz=motion.step_rate_hz), unrest)
     rough = rough_of(motion, view)
     series = series_of(at_positions(rows, rows.smooth_m), PLAIN_WOBBLE, kernels)
     # The wobble is sized on the residuals of the most flexible law; every law then meets the same covariance.

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import Final, Literal
+from typing import Final, Literal, TypeAlias
 
 import numpy as np
 from scipy.linalg import cho_factor, cho_solve
@@ -13,9 +13,12 @@ from vidkin.stages import Array, Motion
 
 #: Rows are averaged down to this rate [Hz]: far above any step rhythm, and linear algebra stays small.
 _RATE_HZ: Final = 50.0
-_RHYTHM_STEPS: Final = 3.0
-_SLOW_S: Final = 0.35
+_JITTER_M2: Final = 1e-8
+_PRIOR_LN_SD: Final = 0.8
 _COLUMN_DEGREE: Final = 5
+
+
+Kernels: TypeAlias = tuple[Array, ...]
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -32,13 +35,23 @@ class Series:
     fixed_origin: bool = False
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(frozen=True, slots=True, kw_only=True)
 class Wobble:
-    """Size of the silhouette's own motion about the centre of mass: step-periodic, slow, and white factor."""
+    """Sizes [m] of the silhouette's own motion about the centre of mass, see `wobble_kernels`."""
 
-    periodic_m: float
+    step_m: float
+    stride_m: float
     slow_m: float
-    white: float
+    fast_m: float
+
+    @property
+    def sizes(self) -> tuple[float, float, float, float]:
+        """In the order of `wobble_kernels`."""
+        return self.step_m, self.stride_m, self.slow_m, self.fast_m
+
+
+#: Before anything is known of this runner's silhouette.
+PLAIN_WOBBLE: Final = Wobble(step_m=0.015, stride_m=0.008, slow_m=0.01, fast_m=0.008)
 
 
 @dataclass(frozen=True, slots=True)
@@ -50,10 +63,6 @@ class Binned:
     x_sd_m: Array
     shared_m: Array
     smooth_m: Array
-
-
-#: Before anything is known of this runner's silhouette.
-PLAIN_WOBBLE: Final = Wobble(0.02, 0.015, 1.0)
 
 
 def binned(motion: Motion) -> Binned:
@@ -92,55 +101,46 @@ def at_positions(rows: Binned, x_m: Array) -> Binned:
     return replace(rows, shared_m=smooth @ coefficients)
 
 
-def wobble_kernels(t_s: Array, *, rate_hz: float, unrest: Array) -> tuple[Array, Array]:
-    """Unit covariances (N, N) of the step-periodic and the slow wobble.
-
-    cos(2 pi f dt) exp(-(dt f/3)^2/2): in rhythm over about three steps; exp(-(dt/0.35 s)^2/2): posture. Our own
-    model of what simulated and real silhouettes do. `unrest` (N,) scales both.
-    """
-    dt = t_s[:, None] - t_s[None, :]
+def unrestful(kernels: Kernels, unrest: Array) -> Kernels:
+    """Unit wobble covariances scaled by `unrest` (N,) at both ends."""
     both = unrest[:, None] * unrest[None, :]
-    rhythm = np.cos(2 * np.pi * rate_hz * dt) * np.exp(-0.5 * (dt * rate_hz / _RHYTHM_STEPS) ** 2)
-    return both * rhythm, both * np.exp(-0.5 * (dt / _SLOW_S) ** 2)
+    return tuple(k * both for k in kernels)
 
 
-def estimate_wobble(rows: Binned, residual_m: Array, jacobian: Array, kernels: tuple[Array, Array]) -> Wobble:
+def estimate_wobble(rows: Binned, residual_m: Array, jacobian: Array, kernels: Kernels) -> Wobble:
     """Sizes of the wobble by restricted maximum likelihood of the residuals.
 
     Patterson & Thompson, Biometrika 58 (1971) 545 (from memory): -2 ln L = ln|C| + ln|J^T C^-1 J| + r^T P r, with
     the law's parameters projected out through its Jacobian J, so that a flexible law does not hide the wobble.
-    Weak log-normal priors keep a short rep's sizes sensible: periodic 2 cm, slow 1.5 cm, white factor 1, each
-    within a factor of about e.
+    Weak log-normal priors, each within a factor of about two, keep a short rep's sizes sensible (`PLAIN_WOBBLE`).
     """
-    shared = rows.shared_m @ rows.shared_m.T
-    white = np.diag(rows.x_sd_m**2)
-    centre = np.log([0.02, 0.015, 1.0])
+    known = np.diag(rows.x_sd_m**2 + _JITTER_M2) + rows.shared_m @ rows.shared_m.T
+    centre = np.log(PLAIN_WOBBLE.sizes)
 
     def cost(q: Array) -> float:
-        p, s, w = np.exp(2 * q)
-        c = w * white + shared + p * kernels[0] + s * kernels[1]
-        c[np.diag_indices_from(c)] += 1e-8
+        c = known + sum(s * k for s, k in zip(np.exp(2 * q), kernels, strict=True))
         try:
-            factor = cho_factor(c, lower=True)
+            lower = cho_factor(c, lower=True)
         except np.linalg.LinAlgError:
             return 1e12
-        cj, cr = cho_solve(factor, jacobian), cho_solve(factor, residual_m)
+        cj, cr = cho_solve(lower, jacobian), cho_solve(lower, residual_m)
         information = jacobian.T @ cj
         sign, logdet = np.linalg.slogdet(information)
         if sign <= 0:
             return 1e12
         projected = jacobian.T @ cr
         quadratic = float(residual_m @ cr - projected @ np.linalg.solve(information, projected))
-        own = 2 * float(np.sum(np.log(np.diag(factor[0]))))
-        return own + float(logdet) + quadratic + float(np.sum((q - centre) ** 2))
+        own = 2 * float(np.sum(np.log(np.diag(lower[0]))))
+        return own + float(logdet) + quadratic + float(np.sum(((q - centre) / _PRIOR_LN_SD) ** 2))
 
-    found = minimize(cost, centre, method="Nelder-Mead", options={"xatol": 0.02, "fatol": 0.02, "maxiter": 160})
-    periodic, slow, factor = np.exp(found.x)
-    return Wobble(float(periodic), float(slow), float(factor))
+    found = minimize(cost, centre, method="Nelder-Mead", options={"xatol": 0.03, "fatol": 0.03, "maxiter": 200})
+    step, stride, slow, fast = (float(v) for v in np.exp(found.x))
+    return Wobble(step_m=step, stride_m=stride, slow_m=slow, fast_m=fast)
 
 
-def series_of(rows: Binned, wobble: Wobble, kernels: tuple[Array, Array]) -> Series:
-    """Positions with their full covariance: white, shared, and the two wobbles."""
-    cov = np.diag((wobble.white * rows.x_sd_m) ** 2 + 1e-8) + rows.shared_m @ rows.shared_m.T
-    cov += wobble.periodic_m**2 * kernels[0] + wobble.slow_m**2 * kernels[1]
+def series_of(rows: Binned, wobble: Wobble, kernels: Kernels) -> Series:
+    """Positions with their full covariance: white, shared, and the wobbles."""
+    cov = np.diag(rows.x_sd_m**2 + _JITTER_M2) + rows.shared_m @ rows.shared_m.T
+    for size, kernel in zip(wobble.sizes, kernels, strict=True):
+        cov += size**2 * kernel
     return Series(kind="position", t_s=rows.t_s, y=rows.x_m, cov=cov)

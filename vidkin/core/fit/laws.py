@@ -169,7 +169,7 @@ def standing_forms(x0_t0: Array, v_end: float, tau: float, drag: Drag | None) ->
 
 
 def flying_forms(x0: float, t0: float, v0: float) -> list[Form]:
-    """Laws of a section entered at speed: constant acceleration, and a mono-exponential with an initial speed."""
+    """Laws of a section entered at speed: constant speed or acceleration, and a mono-exponential already under way."""
     origin = np.array([x0, t0])
     return [
         Form(
@@ -193,6 +193,16 @@ def flying_forms(x0: float, t0: float, v0: float) -> list[Form]:
             # data alone do not fix it.
             prior_mean=_padded(np.zeros(3), [np.log(1.25), 0.0]),
             prior_sd=_padded(np.full(3, np.inf), [0.3, np.inf]),
+            fixed_t0=True,
+        ),
+        Form(
+            name="constant_speed",
+            words="Speed does not change over the stretch in view; it says nothing outside it.",
+            names=("v0",),
+            make=lambda p: models.ConstantAcceleration(v0=p[0], a=0.0),
+            start=_padded(origin, [np.log(v0)]),
+            prior_mean=np.zeros(3),
+            prior_sd=np.full(3, np.inf),
             fixed_t0=True,
         ),
     ]

@@ -14,7 +14,7 @@ from vidkin.stages import Array, Bools
 
 _GRID_S = 1e-3
 _FIRST_RATE_HZ = 3.9
-_SET_HEIGHT, _RUN_HEIGHT = 0.365, 0.578
+_SET_HEIGHT, _RUN_HEIGHT = 0.350, 0.578
 #: Way of the body over a planted foot, at most, / stature [-].
 _OVER_FOOT = 0.535
 _BLOCK_FRONT_S, _BLOCK_REAR_S, _FIRST_FLIGHT_S = 0.36, 0.21, 0.06
@@ -80,8 +80,8 @@ def plan_steps(runner: Runner, sprint: Sprint, until_s: float) -> Contacts:
         on, left = go + _BLOCK_FRONT_S + _FIRST_FLIGHT_S, not runner.lead_left
     else:
         on, left = -0.9, runner.lead_left
-    number = 0
-    while on < until_s + 1.0:
+    number, last_s = 0, max(until_s, on) + 1.0
+    while on < last_s:
         v = float(sprint.v(np.array([on]))[0])
         full = runner.step_rate_hz
         rate = full + (min(_FIRST_RATE_HZ, full) - full) * np.exp(-number / 3.0) if standing else full

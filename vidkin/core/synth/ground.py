@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from functools import lru_cache
 from typing import Final
 
 import cv2
@@ -25,10 +26,10 @@ _SURFACES: Final = {
     "red": (0.235, 0.062, 0.042),
     "blue": (0.045, 0.115, 0.270),
     "grey": (0.155, 0.155, 0.160),
-    "grass": (0.065, 0.125, 0.028),
+    "grass": (0.085, 0.128, 0.038),
 }
-_GRASS: Final = np.array([0.070, 0.120, 0.030], dtype=np.float32)
-_LEAVES: Final = np.array([0.030, 0.060, 0.016], dtype=np.float32)
+_GRASS: Final = np.array([0.092, 0.128, 0.042], dtype=np.float32)
+_LEAVES: Final = np.array([0.040, 0.062, 0.022], dtype=np.float32)
 _WHITE: Final = np.array([0.78, 0.78, 0.75], dtype=np.float32)
 
 
@@ -39,6 +40,11 @@ class Static:
     light: Image
     ground: Image
     leaves: Image
+
+
+@lru_cache(maxsize=2)
+def _textures(seed: int) -> _Textures:
+    return _Textures(np.random.default_rng([seed, 1]))
 
 
 class _Textures:
@@ -69,11 +75,11 @@ def view(lens: Lens) -> tuple[Image, Image]:
     return np.asarray(fine_x), np.asarray(fine_y)
 
 
-def static_picture(scene: Scene, lens: Lens, light: Lit, rng: np.random.Generator) -> Static:
+def static_picture(scene: Scene, lens: Lens, light: Lit) -> Static:
     """Ray-cast the whole static picture, a band of rows at a time."""
     w, h = scene.size_px
     x, y = view(lens)
-    look = _Textures(rng)
+    look = _textures(scene.seed)
     out = Static(
         light=np.zeros((h, w, 3), np.float32), ground=np.zeros((h, w), np.float32), leaves=np.zeros((h, w), np.float32)
     )
@@ -224,7 +230,7 @@ def _hedge(scene: Scene, x: Image, z: Image, tall: float, light: Lit, look: _Tex
     cover = np.clip((tall + ragged - z) / 0.03 + 0.5, 0, 1)
     fine, clumps = look_up(look.rough, x, z, (1.7, 1.7)), look_up(look.smooth, x, z, (3.1, 2.7))
     tone = np.exp(scene.place.contrast * (0.45 * fine + 0.30 * clumps)) * (0.55 + 0.6 * np.clip(z / tall, 0, 1))
-    return np.array([0.045, 0.085, 0.022], np.float32) * tone[..., None] * _face(light, scene).astype(np.float32), cover
+    return np.array([0.056, 0.082, 0.028], np.float32) * tone[..., None] * _face(light, scene).astype(np.float32), cover
 
 
 def _boards(scene: Scene, x: Image, z: Image, tall: float, light: Lit, look: _Textures) -> tuple[Image, Image]:

@@ -148,7 +148,7 @@ class Scene:
     """One filmed rep, fully known.
 
     `camera` in the order of `stages.CAMERA_PARAMETERS`. `others`: runners beside the one measured.
-    Frame i has t = i / rate_hz; what of the exposure that time means is said in `render`.
+    Frame i has t = i / rate_hz; what of the exposure that time means is said in `film`.
     """
 
     camera: tuple[float, ...]

@@ -18,12 +18,12 @@ def f32(values: ArrayLike) -> Image:
 
 def tile(rng: np.random.Generator, *, slope: float) -> Image:
     """Periodic Gaussian field (1024, 1024), mean 0, sd 1, amplitude falling with spatial frequency^-slope."""
-    f = np.fft.fftfreq(_TILE) * _TILE
-    radius = np.hypot(f[:, None], f[None, :])
+    rows, columns = np.fft.fftfreq(_TILE) * _TILE, np.fft.rfftfreq(_TILE) * _TILE
+    radius = np.hypot(rows[:, None], columns[None, :])
     radius[0, 0] = 1
-    spectrum = np.fft.fft2(rng.standard_normal((_TILE, _TILE))) / radius**slope
+    spectrum = np.fft.rfft2(rng.standard_normal((_TILE, _TILE))) / radius**slope
     spectrum[0, 0] = 0
-    field = np.real(np.fft.ifft2(spectrum))
+    field = np.fft.irfft2(spectrum, (_TILE, _TILE))
     return f32(field / field.std())
 
 

@@ -11,6 +11,7 @@ from vidkin.core.uncertainty.columns import covariance, shared_whitener, whitene
 from vidkin.core.uncertainty.criteria import RunsTest, aicc, akaike_weights, runs_test
 from vidkin.core.uncertainty.intervals import Interval, draw, percentile_interval, profile_interval, wald_interval
 from vidkin.core.uncertainty.squares import Jacobian, NoSolution, Residual, Solution, numerical_jacobian, solve
+from vidkin.core.uncertainty.wobble import wobble_kernels
 
 __all__ = [
     "Interval",
@@ -31,4 +32,5 @@ __all__ = [
     "solve",
     "wald_interval",
     "whitener",
+    "wobble_kernels",
 ]

@@ -9,10 +9,10 @@ import numpy as np
 from scipy.optimize import brentq
 
 from vidkin.constants import G_MPS2
+from vidkin.core.synth.film import plan, poses
 from vidkin.core.synth.law import Sprint, drag_constant, moist_air_density
 from vidkin.core.synth.lens import Lens
 from vidkin.core.synth.paint import Actor, flatten, joints_in_frame
-from vidkin.core.synth.render import plan, poses
 from vidkin.core.synth.scene import Scene
 from vidkin.core.synth.shapes import shapes
 from vidkin.stages import Array, Bools

@@ -34,7 +34,7 @@ from vidkin.core.synth.props import draw_cones
 from vidkin.core.synth.scene import Runner, Scene
 from vidkin.core.synth.shapes import shapes
 from vidkin.core.synth.texture import Image, f32
-from vidkin.stages import Array, Frame
+from vidkin.stages import Air, Array, Frame
 
 _POSE_S = 1e-3
 _INSTANTS = (5, 10)
@@ -49,37 +49,43 @@ _CLOUDS_HZ = np.array([0.23, 0.61, 1.3])
 _STRAIGHT_UP = np.array([1e-6, 0.0, 1.0])
 
 
-@lru_cache(maxsize=8)
 def plan(scene: Scene, runner: Runner) -> tuple[Sprint, Contacts, Path]:
     """Law, contacts and path of one runner of the scene."""
-    end = scene.duration_s
-    sprint = integrate(runner, scene.air, start_x_m=scene.lane.start_x_m, until_s=end)
-    contacts = plan_steps(runner, sprint, end)
-    return sprint, contacts, path(runner, sprint, contacts, end)
+    return _plan(runner, scene.air, scene.lane.start_x_m, scene.duration_s)
 
 
-@lru_cache(maxsize=4)
 def poses(scene: Scene, runner: Runner) -> Poses:
     """Joints of one runner on a millisecond grid over the clip."""
-    sprint, contacts, route = plan(scene, runner)
-    return solve_poses(runner, sprint, contacts, route, np.arange(-0.05, scene.duration_s + 0.05, _POSE_S))
+    return _poses(runner, scene.air, scene.lane.start_x_m, scene.duration_s)
 
 
-class _Stage:
-    """All that is the same in every frame."""
+@lru_cache(maxsize=8)
+def _plan(runner: Runner, air: Air, start_x_m: float, end_s: float) -> tuple[Sprint, Contacts, Path]:
+    sprint = integrate(runner, air, start_x_m=start_x_m, until_s=end_s)
+    contacts = plan_steps(runner, sprint, end_s)
+    return sprint, contacts, path(runner, sprint, contacts, end_s)
+
+
+@lru_cache(maxsize=8)
+def _poses(runner: Runner, air: Air, start_x_m: float, end_s: float) -> Poses:
+    sprint, contacts, route = _plan(runner, air, start_x_m, end_s)
+    return solve_poses(runner, sprint, contacts, route, np.arange(-0.05, end_s + 0.05, _POSE_S))
+
+
+class Film:
+    """A scene ready to be filmed: holds all that is the same in every frame; `frame` draws any one of them."""
 
     def __init__(self, scene: Scene) -> None:
-        rng = np.random.default_rng([scene.seed, 1])
         self.scene, self.lens = scene, Lens(scene.camera, scene.size_px)
         self.light: Lit = lit(scene.light, self.lens)
-        still = static_picture(scene, self.lens, self.light, rng)
+        still = static_picture(scene, self.lens, self.light)
         self.front = draw_cones(scene, self.lens, self.light, still.light, still.ground)
         blur = scene.sensor.blur_px
         self.linear = f32(cv2.GaussianBlur(still.light, (0, 0), blur))
         # exposure control: a middle grey, weighted towards the ground as where the runner is
         weight = 0.3 + 0.7 * still.ground
         mean = float((self.linear.mean(axis=2) * weight).sum() / weight.sum())
-        self.gain = float(np.clip(0.165 / mean, 0.4, 3.0))
+        self.gain = float(np.clip(0.18 / mean, 0.4, 3.0))
         w, h = scene.size_px
         across, down = np.meshgrid(np.linspace(-1, 1, w), np.linspace(-h / w, h / w, h))
         fall = 1 - scene.sensor.vignette * (across**2 + down**2) / (1 + (h / w) ** 2)
@@ -112,6 +118,7 @@ class _Stage:
         self.gusts = self.rng.uniform(0, 2 * np.pi, (2, 3))
 
     def frame(self, index: int) -> Frame:
+        """Draw frame `index`. The noise is drawn in the order of the calls."""
         t = index / self.scene.rate_hz
         luma, u, v = self.empty.luma, self.empty.u, self.empty.v
         sd = self.sd
@@ -234,11 +241,11 @@ def _distance(eye: Array, joints: Array) -> float:
 
 def render(scene: Scene) -> Iterator[Frame]:
     """Frames in order; frame i has t = i / rate. The same scene gives the same frames."""
-    stage = _Stage(scene)
+    stage = Film(scene)
     for index in range(scene.frames):
         yield stage.frame(index)
 
 
 def empty_picture(scene: Scene) -> NDArray[np.float32]:
     """The static picture in linear light (H, W, 3), with neither runners nor noise."""
-    return _Stage(scene).linear
+    return Film(scene).linear
