@@ -119,9 +119,14 @@ def test_masses_sum_to_one(sex: str) -> None:
     assert body.mass_weights(sex).sum() == pytest.approx(1.0, abs=1e-12)
 
 
-@pytest.mark.parametrize("start", ["standing", "flying"])
 @pytest.mark.parametrize(
-    ("stature", "speed", "rate"), [(1.55, 8.5, 4.8), (1.78, 10.0, 4.5), (1.95, 11.5, 4.3), (1.60, 11.5, 4.3)]
+    ("start", "stature", "speed", "rate"),
+    [
+        ("standing", 1.55, 8.5, 4.8),
+        ("standing", 1.95, 11.5, 4.3),
+        ("flying", 1.60, 11.5, 4.3),
+        ("flying", 1.95, 9.0, 4.8),
+    ],
 )
 def test_body_keeps_its_promises(start: str, stature: float, speed: float, rate: float) -> None:
     """Centre of mass on the path, bones of fixed length, feet at rest in contact and never under the ground."""
@@ -132,7 +137,7 @@ def test_body_keeps_its_promises(start: str, stature: float, speed: float, rate:
         entry_mps=0.95 * speed,
         step_rate_hz=rate,
     )
-    scene = a_scene(runner=runner, duration_s=4.0)
+    scene = a_scene(runner=runner, duration_s=2.5)
     _, contacts, route = film.plan(scene, runner)
     pose = film.poses(scene, runner)
     joints, t = pose.joints_m, pose.t_s
@@ -150,7 +155,7 @@ def test_body_keeps_its_promises(start: str, stature: float, speed: float, rate:
             ("elbow", "wrist", "forearm"),
         ):
             length = np.linalg.norm(at(f"{first}_{side}") - at(f"{second}_{side}"), axis=1)
-            assert length == pytest.approx(body.LENGTHS[bone] * stature, abs=1e-6)
+            assert np.abs(length - body.LENGTHS[bone] * stature).max() < 1e-6
         for i in np.flatnonzero(contacts.left == (side == "l")):
             down = (t >= contacts.on_s[i]) & (t <= contacts.off_s[i])
             if down.any():
@@ -203,7 +208,7 @@ def test_runner_is_still_before_the_first_movement() -> None:
 def test_truth_speed_is_the_derivative_of_position(scene: synth.Scene) -> None:
     known = synth.truth(scene)
     slope = np.gradient(known.x_m, known.t_s, edge_order=2)
-    assert slope[5:-5] == pytest.approx(known.vx_mps[5:-5], abs=2e-3)
+    assert np.abs(slope - known.vx_mps)[5:-5].max() < 2e-3
     # over whole steps the wobble cancels: the law is the step average
     late = known.t_s > 1.6
     assert np.abs(known.x_m - known.law_x_m)[late].max() < 0.012
@@ -222,7 +227,7 @@ def test_truth_quantities_follow_from_the_law() -> None:
     v = known.law_v_mps
     after = known.t_s >= runner.first_movement_s
     ode = runner.F0_n_kg * (1 - v / runner.V0_mps) - q["k_drag"] * (v - 0.5) * np.abs(v - 0.5)
-    assert known.law_a_mps2[after] == pytest.approx(ode[after], abs=1e-9)
+    assert np.abs(known.law_a_mps2 - ode)[after].max() < 1e-9
     assert np.all(known.law_a_mps2[~after] == 0)
     start = float(q["RF_max"])
     v03 = float(np.interp(runner.first_movement_s + 0.3, known.t_s, v))
@@ -352,7 +357,7 @@ def test_the_drawn_body_is_where_the_truth_is(side: int) -> None:
     assert np.sign(found[-1] - found[0]) == side
     mirrored = synth.truth(replace(scene, camera=camera(-side)))
     assert mirrored.quantities["F0"] == known.quantities["F0"]
-    assert mirrored.x_m == pytest.approx(known.x_m)
+    assert np.array_equal(mirrored.x_m, known.x_m)
 
 
 def test_a_shadow_falls_away_from_the_sun() -> None:
@@ -459,7 +464,7 @@ def test_every_place_can_be_drawn(surface: str, backdrop: str) -> None:
 
 def test_random_scenes_are_fit_to_analyse() -> None:
     sides, starts = set(), set()
-    for seed in range(7):
+    for seed in range(5):
         scene = synth.random_scene(np.random.default_rng(seed))
         runner = scene.runner
         known = synth.truth(scene)

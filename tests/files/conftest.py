@@ -1,7 +1,6 @@
 # Makes small clips on the fly and finds the real footage, which is not part of the repository.
 from __future__ import annotations
 
-import os
 import struct
 from collections.abc import Callable, Sequence
 from datetime import UTC, datetime
@@ -31,17 +30,6 @@ from vidkin.stages import (
     Split,
     Steps,
 )
-
-CHECKOUT = Path(__file__).resolve().parents[2]
-
-
-@pytest.fixture
-def real_footage() -> Path:
-    """Folder of real phone footage: $VIDKIN_REAL_FOOTAGE, or shared/real beside the checkout."""
-    folder = Path(os.environ.get("VIDKIN_REAL_FOOTAGE", CHECKOUT.parent / "shared" / "real"))
-    if not folder.is_dir():
-        pytest.skip(f"no real footage: {folder} is not there (set VIDKIN_REAL_FOOTAGE)")
-    return folder
 
 
 def shade(index: int) -> int:
