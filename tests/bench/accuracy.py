@@ -37,7 +37,7 @@ ABSOLUTE = {
 
 @dataclass(slots=True)
 class Row:
-    """One quantity of one scene: error and half width of its interval in shown units, and whether the truth is inside."""
+    """One quantity of one scene, in shown units: error, half width of its interval, and whether it holds the truth."""
 
     name: str
     error: float
@@ -133,7 +133,8 @@ def report(results: Iterable[Result]) -> None:
         unit = ABSOLUTE[name][0] if name in ABSOLUTE else "%"
         rms, largest = np.sqrt(np.mean(e**2)), np.abs(e).max()
         print(
-            f"| {name} | {e.size} | {unit} | {e.mean():+.2f} | {rms:.2f} | {largest:.2f} | {half:.2f} | {inside:.0f} % |"
+            f"| {name} | {e.size} | {unit} | {e.mean():+.2f} | {rms:.2f} | {largest:.2f} | {half:.2f} "
+            f"| {inside:.0f} % |"
         )
 
 

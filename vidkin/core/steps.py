@@ -242,7 +242,9 @@ def _lateral(contacts: list[_Contact], camera: Camera, lane: Lane) -> tuple[floa
     if np.count_nonzero(good) < 3:
         return *prior, False
     per_row = float(np.median(np.abs(lower - y)[good]))
-    scatter = 1.4826 * float(np.median(np.abs(y[good] - np.median(y[good])))) / np.sqrt(np.count_nonzero(good))
+    # Not divided by the root of the count: what scatters from step to step (a dark shoe lost on dark ground) is also
+    # wrong on average.
+    scatter = 1.4826 * float(np.median(np.abs(y[good] - np.median(y[good]))))
     seen, seen_sd = (
         float(np.median(y[good])),
         float(np.sqrt((_ROW_SD_PX * per_row) ** 2 + scatter**2 + _GROUND_SD_M**2)),

@@ -26,6 +26,7 @@ _DISAGREES_SD: Final = 3.5
 _LEAST_STEPS: Final = 3
 _NEAR_TOP: Final = 0.97
 _MEAN_NEAR_TOP: Final = 0.985
+_LENGTH_BY_SPEED: Final = 0.6
 _EDGE_M: Final = 0.12
 #: What a touch-down and a foot place are worth (simulated scenes): sd.
 _CONTACT_S: Final = 0.015
@@ -296,9 +297,10 @@ def _steps_at_top(steps: Steps, top: Quantity, law: LawFit, *, level: float) -> 
         # Neighbouring gaps share a contact, so errors of inner contacts cancel: the mean is good to the outer two.
         period_sd = _CONTACT_S * np.sqrt(2) / n
         rate, rate_sd = 1 / period, period_sd / period**2
-        # Steps run a little below top speed are that much shorter.
-        length = float(ways[chosen].mean()) * max(1.0, _MEAN_NEAR_TOP * top.value / float(speeds[chosen].mean()))
-        length_sd = float(np.hypot(_FOOT_M * np.sqrt(2) / n, scale * length))
+        # Steps run below top speed are shorter, though less than in proportion: the rate is still rising too.
+        grown = max(1.0, _MEAN_NEAR_TOP * top.value / float(speeds[chosen].mean())) ** _LENGTH_BY_SPEED
+        length = grown * float(ways[chosen].mean())
+        length_sd = float(np.linalg.norm([_FOOT_M * np.sqrt(2) / n, scale * length, 0.7 * (grown - 1) * length]))
     else:
         method = "whole pass"
         rate, rate_sd = steps.step_rate_hz, steps.step_rate_sd_hz

@@ -13,7 +13,7 @@ _STILL_MPS: Final = 0.6
 _STILL_LEAST_S: Final = 0.05
 _STIR_M: Final = 0.08
 _STIR_S: Final = 0.1
-_UNFOLDING: Final = 3.0
+_UNFOLDING: Final = 4.0
 _UNFOLDING_S: Final = 0.4
 
 
@@ -58,7 +58,7 @@ def view_of(motion: Motion, start_x_m: float) -> View:
 def restlessness(t_s: Array, x_m: Array) -> Array:
     """How strongly the silhouette may wobble about the centre of mass, against its size in upright running (N,).
 
-    Next to nothing while the runner stands still; four times as much in the first step, when arms leave the ground,
+    Next to nothing while the runner stands still; five times as much in the first step, when arms leave the ground,
     legs unfold and the outline changes most, easing off within half a second.
     """
     still = x_m[: max(3, int(np.argmax(x_m - x_m[0] > _STIR_M)) // 2)]
