@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 import signal
 import sys
 from collections.abc import Callable
@@ -314,6 +315,8 @@ def main(args: list[str] | None = None) -> NoReturn:
         if hasattr(stream, "reconfigure"):  # a name or a degree sign that the terminal lacks must not end a run
             stream.reconfigure(errors="backslashreplace")
     signal.signal(signal.SIGTERM, _stop)
+    # Read when numpy loads, which it has not yet: the matrices here are small, and threads only slow them down.
+    os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
     try:
         code = app(args, prog_name="vidkin", standalone_mode=False)
     except TyperException as error:

@@ -7,6 +7,7 @@ from dataclasses import dataclass, replace
 from typing import Final
 
 import numpy as np
+from scipy.optimize import least_squares
 from scipy.stats import norm
 
 from vidkin.core import models
@@ -23,8 +24,8 @@ _DRAG_WAY_M: Final = 20.0
 _PLATEAU_SHARE: Final = 0.55
 _LUMPED: Final = 1.8
 _DISAGREES_SD: Final = 3.5
-_LEAST_STEPS: Final = 3
-_NEAR_TOP: Final = 0.97
+_LEAST_CONTACTS: Final = 5
+_NEAR_TOP: Final = 0.9
 _MEAN_NEAR_TOP: Final = 0.985
 _LENGTH_BY_SPEED: Final = 0.6
 _EDGE_M: Final = 0.12
@@ -281,26 +282,30 @@ def with_film(fit: Fit, motion: Motion, steps: Steps | Failure, *, remarks: tupl
 
 
 def _steps_at_top(steps: Steps, top: Quantity, law: LawFit, *, level: float) -> tuple[Quantity, ...]:
-    """Step rate and length at top speed: from touch-downs and foot places of the steps run near it, or, where
-    contacts are few, the whole pass's rate and top speed over it."""
+    """Step rate and length at top speed: robust lines through touch-downs and foot places over the count of steps.
+
+    For the steps run near it; where contacts are few, the whole pass's rate and top speed over it.
+    """
     z = float(norm.ppf(0.5 + level / 2))
-    gaps, ways = np.diff(steps.on_s), np.diff(steps.x_m)
-    speeds = np.interp(steps.on_s[:-1] + 0.5 * gaps, law.t_s, law.v_mps)
-    clean = np.abs(gaps * steps.step_rate_hz - 1) < 0.3
-    chosen = np.flatnonzero(clean & (speeds >= _NEAR_TOP * top.value))
-    if chosen.size < _LEAST_STEPS:
-        chosen = np.flatnonzero(clean)[-_LEAST_STEPS:]
+    # Not the contacts' middle: the last one may be cut short by the picture's edge.
+    touch = steps.on_s
+    speeds = np.interp(touch, law.t_s, law.v_mps)
     scale = 0.0 if top.low is None or top.high is None else 0.5 * (top.high - top.low) / (z * top.value)
-    if chosen.size >= _LEAST_STEPS:
-        n, method = chosen.size, f"{chosen.size} steps near top speed"
-        period = float(gaps[chosen].mean())
-        # Neighbouring gaps share a contact, so errors of inner contacts cancel: the mean is good to the outer two.
-        period_sd = _CONTACT_S * np.sqrt(2) / n
+    chosen = speeds >= _NEAR_TOP * top.value
+    if np.count_nonzero(chosen) < _LEAST_CONTACTS:
+        chosen = np.arange(touch.size) >= touch.size - _LEAST_CONTACTS
+    if touch.size >= _LEAST_CONTACTS:
+        method = f"{np.count_nonzero(chosen)} contacts near top speed"
+        # A missed contact is bridged by the whole number of steps that its gap holds.
+        jumps = np.maximum(np.round(np.diff(touch[chosen]) * steps.step_rate_hz), 1.0)
+        count = np.concatenate([[0.0], np.cumsum(jumps)])
+        period, period_sd = _robust_slope(count, touch[chosen], scale=_CONTACT_S)
+        way, way_sd = _robust_slope(count, steps.x_m[chosen], scale=_FOOT_M)
         rate, rate_sd = 1 / period, period_sd / period**2
         # Steps run below top speed are shorter, though less than in proportion: the rate is still rising too.
         grown = max(1.0, _MEAN_NEAR_TOP * top.value / float(speeds[chosen].mean())) ** _LENGTH_BY_SPEED
-        length = grown * float(ways[chosen].mean())
-        length_sd = float(np.linalg.norm([_FOOT_M * np.sqrt(2) / n, scale * length, 0.7 * (grown - 1) * length]))
+        length = grown * way
+        length_sd = float(np.linalg.norm([way_sd, scale * length, 0.7 * (grown - 1) * length]))
     else:
         method = "whole pass"
         rate, rate_sd = steps.step_rate_hz, steps.step_rate_sd_hz
@@ -310,3 +315,15 @@ def _steps_at_top(steps: Steps, top: Quantity, law: LawFit, *, level: float) -> 
         Quantity(name=name, value=v, low=v - z * sd, high=v + z * sd, unit=u, method=method, level=level)
         for name, v, sd, u in (("step_rate", rate, rate_sd, "Hz"), ("step_length", length, length_sd, "m"))
     )
+
+
+def _robust_slope(x: Array, y: Array, *, scale: float) -> tuple[float, float]:
+    """Slope and its sd of a line that a few wild points do not bend (scipy's soft L1 loss); `scale`: sd of y."""
+
+    def miss(p: Array) -> Array:
+        return np.asarray((y - p[0] * x - p[1]) / scale)
+
+    slope, offset = (float(c) for c in least_squares(miss, np.polyfit(x, y, 1), loss="soft_l1").x)
+    left = y - slope * x - offset
+    scatter = max(scale, 1.4826 * float(np.median(np.abs(left - np.median(left)))))
+    return slope, scatter / float(np.sqrt(np.sum((x - x.mean()) ** 2)))

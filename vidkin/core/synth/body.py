@@ -80,7 +80,8 @@ _ENDS: Final = (
 )
 
 
-_PASSES: Final = 80
+# Share of the gap taken in each pass: all of it, then less for the poses that overshoot.
+_PASSES: Final = (1.0,) * 20 + (0.5,) * 25 + (0.2,) * 60 + (0.03,) * 200
 
 
 def mass_weights(sex: str) -> Array:
@@ -121,7 +122,7 @@ def _turn(angle: Array) -> tuple[Array, Array]:
 
 def trunk_lean(runner: Runner, sprint: Sprint, t_s: Array) -> Array:
     """Forward lean of the trunk (N,) [rad]: level in the set position, 50 deg at the first step, then upright."""
-    top = np.radians(8.0)
+    top = np.radians(runner.lean_deg)
     if runner.start == "flying":
         return np.full_like(t_s, top)
     gone = sprint.x(t_s) - sprint.x0_m
@@ -130,9 +131,9 @@ def trunk_lean(runner: Runner, sprint: Sprint, t_s: Array) -> Array:
     return np.asarray((1 - out) * np.radians(101.0) + out * driven)
 
 
-def _arms(lean: Array, phase: Array, *, offset: float) -> tuple[Array, Array]:
+def _arms(lean: Array, phase: Array, *, offset: float, reach: float) -> tuple[Array, Array]:
     """Directions (N, 3) of an upper arm and forearm swinging against the same side's leg; `offset` in steps."""
-    swing = np.cos(np.pi * (phase - offset))
+    swing = reach * np.cos(np.pi * (phase - offset))
     angle = np.radians(-12.0) + np.radians(56.0) * swing - 0.72 * lean
     bend = np.radians(88.0) + np.radians(22.0) * swing
     out = np.full_like(angle, 0.14)
@@ -197,7 +198,7 @@ class _Upper:
             across = np.stack([-np.sin(twist), np.cos(twist), np.zeros_like(twist)], -1)
             shoulder = shoulder_mid + sign * n["half_shoulders"] * h * across - 0.012 * h * up
             offset = 0.32 + (0.0 if side == "l" else 1.0) + self.shift
-            upper, fore = _arms(lean, self.phase, offset=offset)
+            upper, fore = _arms(lean, self.phase, offset=offset, reach=self.runner.arm_swing)
             flip = np.array([1.0, sign, 1.0])
             upper, fore = upper * flip, fore * flip
             upper, fore, hand = self._rest(shoulder, upper, fore, sign)
@@ -229,7 +230,7 @@ def solve_poses(runner: Runner, sprint: Sprint, contacts: Contacts, route: Path,
     """Joints at `t_s`: the feet follow the step plan, the pelvis is moved until the mass centre lies on the path.
 
     Fixed point: pelvis += path - centre(pelvis). A moved pelvis moves head, trunk and arms fully and the legs in
-    part, so a pass leaves less than half of the gap; where a straight leg makes it overshoot, halved steps follow.
+    part, so a pass leaves less than half of the gap; where a straight leg makes it overshoot, shorter steps follow.
     It ends below 1e-9 m.
     """
     h, com = runner.stature_m, route.com(t_s)
@@ -240,7 +241,7 @@ def solve_poses(runner: Runner, sprint: Sprint, contacts: Contacts, route: Path,
     pelvis = com - np.array([0.03, 0.0, 0.07]) * h
     turn = np.radians(7.0) * np.sin(np.pi * (upper.phase + upper.shift)) * upper.free
     across = np.stack([-np.sin(-turn), np.cos(turn), np.zeros_like(turn)], -1)
-    for turn_number in range(_PASSES):
+    for share in _PASSES:
         joints[:, INDEX["pelvis"]] = pelvis
         upper.place(joints)
         for side, sign in (("l", 1.0), ("r", -1.0)):
@@ -249,7 +250,7 @@ def solve_poses(runner: Runner, sprint: Sprint, contacts: Contacts, route: Path,
         gap = com - np.einsum("j,njk->nk", weights, joints)
         if np.abs(gap).max() < 1e-9:
             break
-        pelvis = pelvis + gap * (1.0 if turn_number < _PASSES // 4 else 0.5)
+        pelvis = pelvis + share * gap
     return Poses(t_s=t_s, joints_m=joints)
 
 

@@ -79,6 +79,8 @@ def _athlete(rng: np.random.Generator) -> Runner:
         entry_mps=speed * float(rng.uniform(0.82, 0.95)),
         step_rate_hz=float(rng.uniform(4.3, 4.8)),
         wobble_mps=float(rng.uniform(0.15, 0.3)),
+        lean_deg=float(rng.uniform(4, 13)),
+        arm_swing=float(rng.uniform(0.75, 1.2)),
         sex="F" if female else "M",
         lead_left=bool(rng.random() < 0.6),
         outfit=_outfit(rng),

@@ -16,7 +16,7 @@ _GRID_S = 1e-3
 _FIRST_RATE_HZ = 3.9
 _SET_HEIGHT, _RUN_HEIGHT = 0.350, 0.578
 #: Way of the body over a planted foot, at most, / stature [-].
-_OVER_FOOT = 0.535
+_OVER_FOOT = 0.51
 _BLOCK_FRONT_S, _BLOCK_REAR_S, _FIRST_FLIGHT_S = 0.36, 0.21, 0.06
 
 

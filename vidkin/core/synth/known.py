@@ -32,9 +32,10 @@ class Truth:
     the law, which is the step average. `contact_on_s`, `contact_off_s`, `contact_x_m`, `contact_y_m` (C,) foot contacts
     that begin inside the clip (ball of the foot); `contact_left` (C,).
     `view_s` first and last time at which the whole body is in the picture; equal where it never is.
-    `quantities` by the design's names, SI units, F0, V0 and P_max per kilogram; `splits_s` {metres: seconds} from the
-    first movement to the law's centre of mass crossing start line + metres, for places reached in the clip (empty for
-    a flying run, which has no first movement).
+    `quantities` by the project's names: SI units, shares in %, F0 and P_max per kilogram, `top_speed_at` from the
+    start line, `step_rate` and `step_length` over the steps within 3 % of top speed (at least the last two).
+    `splits_s` {metres: seconds} from the first movement to the law's centre of mass crossing start line + metres, for
+    places reached in the clip (empty for a flying run, which has no first movement).
     """
 
     t_s: Array

@@ -36,7 +36,8 @@ class Runner:
     `first_movement_s`, centre of mass `set_back_m` behind the start line. "flying": at t = 0 the centre of mass is at
     `entry_x_m` with `entry_mps`; the law holds from before the first frame and there is no first movement.
     `step_rate_hz` cadence at top speed, `wobble_mps` peak-to-peak within-step change of the centre of mass's
-    speed at top speed. `sex` selects the segment table. `lead_left` the left foot is in front in the set position.
+    speed at top speed, `lean_deg` the upright trunk's lean, `arm_swing` the arms' reach (1 usual). `sex` selects the
+    segment table. `lead_left` the left foot is in front in the set position.
     """
 
     athlete: Athlete = field(default_factory=lambda: Athlete(label="A", mass_kg=72.0, stature_m=1.78))
@@ -51,6 +52,8 @@ class Runner:
     entry_mps: float = 8.0
     step_rate_hz: float = 4.5
     wobble_mps: float = 0.2
+    lean_deg: float = 8.0
+    arm_swing: float = 1.0
     sex: Literal["F", "M"] = "M"
     lead_left: bool = True
     outfit: Outfit = field(default_factory=Outfit)
