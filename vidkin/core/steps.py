@@ -180,7 +180,8 @@ def _grouped(
         if len(group) * _BIN_M < 0.05:
             continue
         columns = np.array(group)
-        on, off = float(np.quantile(columns[:, 0], 0.15)), float(np.quantile(columns[:, 1], 0.85))
+        # The median column: heel and toe leave and meet the ground band at other times than the ball of the foot.
+        on, off = float(np.median(columns[:, 0])), float(np.median(columns[:, 1]))
         weight = columns[:, 1] - columns[:, 0]
         x = float(np.average(columns[:, 2], weights=weight))
         held = (t > on + 0.2 * (off - on)) & (t < off - 0.2 * (off - on)) & (left < x + 0.1) & (right > x - 0.1)

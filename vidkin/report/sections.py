@@ -166,16 +166,19 @@ def steps(analysis: Analysis) -> Markup:
     rows = []
     for k in range(found.on_s.size):
         more = k + 1 < found.on_s.size
-        step = found.on_s[k + 1] - found.on_s[k] if more else 0.0
+        step = float(found.on_s[k + 1] - found.on_s[k]) if more else 0.0
+        # Where a contact was missed the gap holds several steps: their mean is shown, and no flight time.
+        held = max(1, round(step * found.step_rate_hz))
+        mean = "" if held == 1 else f" (mean of {held})"
         rows.append(
             (
                 str(k + 1),
                 number(found.on_s[k] - t0, 3),
                 number(1000 * (found.off_s[k] - found.on_s[k]), 0),
-                number(1000 * (found.on_s[k + 1] - found.off_s[k]), 0) if more else "–",
+                number(1000 * (found.on_s[k + 1] - found.off_s[k]), 0) if more and held == 1 else "–",
                 number(found.x_m[k] - x0, 2),
-                number(abs(found.x_m[k + 1] - found.x_m[k]), 2) if more else "–",
-                number(1 / step, 2) if step > 0 else "–",
+                number(abs(found.x_m[k + 1] - found.x_m[k]) / held, 2) + mean if more else "–",
+                number(held / step, 2) + mean if step > 0 else "–",
             )
         )
     since = "first movement" if first_movement_s(analysis) is not None else "the clip's start"
