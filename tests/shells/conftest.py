@@ -13,8 +13,12 @@ from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-import numpy as np
 import pytest
+
+# Before numpy loads: matrices here are small, and threads of several test processes only get in one another's way.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
+import numpy as np
 
 from vidkin.cli import main
 from vidkin.core import synth
@@ -163,13 +167,23 @@ def rendered(tmp_path_factory: pytest.TempPathFactory) -> Path:
     return folder
 
 
+def _place(rendered: Path, folder: Path) -> Path:
+    shutil.copy(rendered / "small.mp4", folder)
+    path = folder / "small.toml"
+    path.write_text(sheet_text(small_scene()), encoding="utf-8")
+    return path
+
+
+@pytest.fixture(scope="module")
+def shared_rep(rendered: Path, tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A sheet beside its clip, for all tests of a file: leave it as it is."""
+    return _place(rendered, tmp_path_factory.mktemp("shared"))
+
+
 @pytest.fixture
 def rep(rendered: Path, tmp_path: Path) -> Path:
     """A sheet beside its clip, in a folder of its own."""
-    shutil.copy(rendered / "small.mp4", tmp_path)
-    path = tmp_path / "small.toml"
-    path.write_text(sheet_text(small_scene()), encoding="utf-8")
-    return path
+    return _place(rendered, tmp_path)
 
 
 @pytest.fixture

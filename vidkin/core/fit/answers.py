@@ -28,6 +28,8 @@ _LEAST_CONTACTS: Final = 5
 _NEAR_TOP: Final = 0.9
 _MEAN_NEAR_TOP: Final = 0.985
 _LENGTH_BY_SPEED: Final = 0.6
+#: Arms and head stir before, or after, the centre of mass does: sd of the onset seen in an outline [s].
+_ONSET_S: Final = 0.008
 _EDGE_M: Final = 0.12
 #: What a touch-down and a foot place are worth (simulated scenes): sd.
 _CONTACT_S: Final = 0.015
@@ -272,6 +274,13 @@ def with_film(fit: Fit, motion: Motion, steps: Steps | Failure, *, remarks: tupl
     else:
         for q in _steps_at_top(steps, top, fit.laws[fit.law], level=level):
             found[q.name] = q
+    if (onset := found.get("first_movement")) is not None and onset.low is not None and onset.high is not None:
+        edge = float(norm.ppf(0.5 + level / 2)) * _ONSET_S
+        found["first_movement"] = replace(
+            onset,
+            low=onset.value - float(np.hypot(onset.value - onset.low, edge)),
+            high=onset.value + float(np.hypot(onset.high - onset.value, edge)),
+        )
     law = fit.laws[fit.law]
     here = motion.inside & (motion.t_s > law.parameters["t0"] + motion.window_s)
     off = np.abs(np.interp(motion.t_s, law.t_s, law.v_mps) - motion.v_mps)[here]
