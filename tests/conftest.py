@@ -6,6 +6,9 @@ from pathlib import Path
 
 import pytest
 
+# Before numpy loads: tests run side by side, and more threads than cores cost time.
+os.environ.setdefault("OPENBLAS_NUM_THREADS", "1")
+
 CHECKOUT = Path(__file__).resolve().parents[1]
 
 

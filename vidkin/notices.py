@@ -138,11 +138,36 @@ REGISTRY: Final[dict[str, Entry]] = {
         "out most is '{label}', {worst_cm:.1f} cm off.",
         "Look at the overlay; check that mark's place on the track and its click. Intervals were widened to match.",
     ),
+    "mark_left_out": Entry(
+        "camera",
+        "warning",
+        "Mark '{label}' disagrees with the other {others} by {cm:.0f} cm; it was left out.{looks}",
+        "Check its coordinates and its click, or take it out of the sheet.",
+    ),
+    "marks_swapped": Entry(
+        "camera",
+        "warning",
+        "Marks '{first}' and '{second}' look swapped: each fits at the other's click. Both were left out; the other "
+        "{others} define the camera.",
+        "Exchange their pixels in the sheet.",
+    ),
+    "other_layout": Entry(
+        "camera",
+        "serious",
+        "The marks are given as {used}, but {better} fits them far better.",
+        "Check which event's marks these are; the colours differ from place to place.",
+    ),
     "scale_uncertain": Entry(
         "camera",
         "warning",
         "These marks leave the length of the lane uncertain by {percent:.1f} % (one sd).",
         "Add marks at both ends of the filmed stretch, on both lane lines.",
+    ),
+    "tag_unread": Entry(
+        "camera",
+        "warning",
+        "Tag {tag} gives no mark: {reason}.",
+        "{hint}",
     ),
     # --- track ---
     "others_run": Entry(

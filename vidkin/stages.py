@@ -65,12 +65,44 @@ class Mark:
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
+class Sighting:
+    """A click on something straight whose place along itself is not known: a lane line, a vertical pole.
+
+    `xyz_m` (3,) any point of it [m]; it runs along axis `free`. `uv_px` (2,) the click [px], `sd_px` its sd across
+    the line, `sd_m` the placement's.
+    """
+
+    label: str
+    free: Literal["x", "z"]
+    xyz_m: Array
+    uv_px: Array
+    sd_px: float = 1.0
+    sd_m: float = 0.01
+
+    def __post_init__(self) -> None:
+        _checked(self, "xyz_m", (3,))
+        _checked(self, "uv_px", (2,))
+        if self.sd_px <= 0 or self.sd_m < 0:
+            raise ValueError(f"Sighting {self.label}: sd_px {self.sd_px} must be > 0 and sd_m {self.sd_m} >= 0")
+
+
+@dataclass(frozen=True, slots=True, kw_only=True)
 class CameraPrior:
-    """What the user knows of the camera before any mark; None is "not stated"."""
+    """What is known of the camera before any mark; None is "not stated". Sds are of what is stated.
+
+    `focal_rel_sd` relative sd of the focal length behind `hfov_deg`; `k1`, `k2` the lens's radial terms.
+    """
 
     hfov_deg: float | None = None
+    focal_rel_sd: float = 0.05
     height_m: float | None = None
+    height_sd_m: float = 0.15
     distance_m: float | None = None
+    distance_sd_m: float = 0.5
+    k1: float = 0.0
+    k1_sd: float = 0.1
+    k2: float = 0.0
+    k2_sd: float = 0.05
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -111,6 +143,7 @@ class Rep:
     lane: Lane = field(default_factory=Lane)
     camera: CameraPrior = field(default_factory=CameraPrior)
     marks: tuple[Mark, ...] = ()
+    sightings: tuple[Sighting, ...] = ()
     splits_m: tuple[float, ...] = ()
 
 
@@ -178,6 +211,8 @@ class Camera:
     clockwise about the axis as the photographer sees it.
     `mark_uv_px` (M, 2) where the model puts each mark; `mark_error_px` (M, 2) sighting minus model;
     `mark_error_m` (M,) the length of that error at the mark's distance, across the line of sight [m].
+    `used` (M,) False for marks that disagree with the others and were left out; a notice names each.
+    `sighting_error_px` (S,) distance of each of the `sightings` from the line that the model draws.
     `x_sd_m` (K, 2): columns lane x [m] and the sd of a position measured there [m], camera alone.
     `scale_sd` the relative sd of lane lengths in the marked stretch [-].
     """
@@ -190,12 +225,21 @@ class Camera:
     mark_uv_px: Array = field(default_factory=lambda: np.zeros((0, 2)))
     mark_error_px: Array = field(default_factory=lambda: np.zeros((0, 2)))
     mark_error_m: Array = field(default_factory=lambda: np.zeros(0))
+    used: Bools = field(default_factory=lambda: np.zeros(0, dtype=bool))
+    sightings: tuple[Sighting, ...] = ()
+    sighting_error_px: Array = field(default_factory=lambda: np.zeros(0))
     x_sd_m: Array = field(default_factory=lambda: np.zeros((0, 2)))
     scale_sd: float = 0.0
     notices: tuple[Notice, ...] = ()
 
     def __post_init__(self) -> None:
         n, m = len(CAMERA_PARAMETERS), len(self.marks)
+        used = np.array(self.used, dtype=np.bool_) if np.size(self.used) else np.ones(m, dtype=np.bool_)
+        if used.shape != (m,):
+            raise ValueError(f"Camera.used: shape {used.shape}, expected {(m,)}")
+        used.flags.writeable = False
+        object.__setattr__(self, "used", used)
+        _checked(self, "sighting_error_px", (len(self.sightings),))
         p = _checked(self, "parameters", (n,))
         _checked(self, "cov", (n, n))
         _checked(self, "mark_uv_px", (m, 2))
@@ -364,9 +408,9 @@ class LawFit:
     """One sprint law fitted to the positions.
 
     `parameters` by name, `sd` by name; `criterion` the corrected Akaike criterion (smaller is better),
-    `weight` its Akaike weight; `t_s`, `x_m`, `v_mps`, `a_mps2` the fitted curve at the rows that were fitted (the motion's,
-    averaged over short spans); `residual_m` measured minus fitted there (m/s for a table of speeds); `words` what
-    the law assumes, in one line.
+    `weight` its Akaike weight; `t_s`, `x_m`, `v_mps`, `a_mps2` the fitted curve at the rows that were fitted (the
+    motion's, averaged over short spans); `residual_m` measured minus fitted there (m/s for a table of speeds);
+    `words` what the law assumes, in one line.
     """
 
     name: str

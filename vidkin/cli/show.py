@@ -72,11 +72,12 @@ def demo(s: Session, done: DemoOutcome) -> None:
         "splits": [{"distance_m": d, "time_s": t} for d, t in done.splits_truth.items()],
     }
     s.results.append({**_record(done.outcome), "truth": truth})
-    folder = done.outcome.folder
+    folder, written = done.outcome.folder, done.outcome.files
+    places = {"Report": "report.html", "Video": "tracked.mp4"}
     s.say(
         text.demo_table(done.outcome.analysis, done.truth, done.splits_truth),
         *_remarks(done.outcome.analysis),
-        f"Report: {folder / 'report.html'}\nVideo:  {folder / 'tracked.mp4'}",
+        "\n".join(f"{what + ':':7} {folder / name}" for what, name in places.items() if name in written),
     )
     _close(s, done.outcome)
 
@@ -111,9 +112,9 @@ def analyses(s: Session, every: Sequence[Outcome | Failed]) -> None:
     """A row for each sheet; errors and stages that could not answer below."""
     s.code = joint_exit_code([one.exit_code for one in every])
     table = Table(title=f"{len(every)} sheets", title_justify="left", box=None, pad_edge=False, header_style="bold")
-    for heading, right in (("sheet", False), ("top_speed, m/s", True), ("interval", False), ("notices", True)):
-        table.add_column(heading, justify="right" if right else "left", overflow="fold")
-    table.add_column("outcome", overflow="fold")
+    table.add_column("sheet", overflow="fold")
+    for heading, right in (("top_speed, m/s", True), ("interval", False), ("notices", True), ("outcome", False)):
+        table.add_column(heading, justify="right" if right else "left", no_wrap=True)
     for one in every:
         if isinstance(one, Failed):
             error = {"message": one.message, "hint": one.hint}

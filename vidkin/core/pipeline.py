@@ -36,7 +36,13 @@ class Scan:
         if self.picture is None:
             self.picture = frame
             height, width = frame.luma.shape
-            self.camera = resect(self.rep.marks, (width, height), prior=self.rep.camera, lane=self.rep.lane)
+            self.camera = resect(
+                self.rep.marks,
+                (width, height),
+                prior=self.rep.camera,
+                lane=self.rep.lane,
+                sightings=self.rep.sightings,
+            )
             if self.camera:
                 ready = tracking.sampler(self.camera, self.rep.lane)
                 if isinstance(ready, Failure):

@@ -16,7 +16,7 @@ from pydantic import AfterValidator, BaseModel, ConfigDict, Field, ValidationErr
 from vidkin.errors import UsageError
 from vidkin.files.layouts import find_point, read_layout
 from vidkin.files.sheet_errors import describe
-from vidkin.stages import Air, Athlete, CameraPrior, Lane, Mark, Rep
+from vidkin.stages import Air, Athlete, CameraPrior, Lane, Mark, Rep, Sighting
 
 #: Station pressure and altitude, both stated, may differ from the standard atmosphere by this much [-].
 _PRESSURE_TOLERANCE: Final = 0.07
@@ -74,7 +74,9 @@ class _Lane(_Strict):
 class _Camera(_Strict):
     hfov_deg: float | None = _within(5, 150)
     height_m: float | None = _within(0.05, 50)
+    height_sd_m: float = _within(0.001, 10, 0.15)
     distance_m: float | None = _within(1, 300)
+    distance_sd_m: float = _within(0.001, 50, 0.5)
 
 
 class _Calibration(_Strict):
@@ -93,6 +95,30 @@ class _Mark(_Strict):
     sd_m: float | None = _within(0, 1)
 
 
+class _Line(_Strict):
+    """A click anywhere on a line along the lane."""
+
+    label: _Text
+    y_m: float = Field(ge=-100, le=100, allow_inf_nan=False)
+    z_m: float = _within(-5, 30, 0.0)
+    u_px: float = Field(ge=-20_000, le=20_000, allow_inf_nan=False)
+    v_px: float = Field(ge=-20_000, le=20_000, allow_inf_nan=False)
+    sd_px: float = _within(0.01, 100, 1.0)
+    sd_m: float = _within(0, 1, 0.01)
+
+
+class _Pole(_Strict):
+    """A click anywhere on a vertical pole."""
+
+    label: _Text
+    x_m: float = Field(ge=-500, le=500, allow_inf_nan=False)
+    y_m: float = Field(ge=-100, le=100, allow_inf_nan=False)
+    u_px: float = Field(ge=-20_000, le=20_000, allow_inf_nan=False)
+    v_px: float = Field(ge=-20_000, le=20_000, allow_inf_nan=False)
+    sd_px: float = _within(0.01, 100, 1.0)
+    sd_m: float = _within(0, 1, 0.01)
+
+
 class _SheetFile(_Strict):
     clip: _Text
     capture_fps: float | None = _within(1, 100_000)
@@ -103,6 +129,8 @@ class _SheetFile(_Strict):
     camera: _Camera = _Camera()
     calibration: _Calibration | None = None
     mark: list[_Mark] = []
+    line: list[_Line] = []
+    pole: list[_Pole] = []
 
 
 def read_sheet(path: Path) -> Sheet:
@@ -140,9 +168,36 @@ def read_sheet(path: Path) -> Sheet:
         lane=Lane(**file.lane.model_dump()),
         camera=CameraPrior(**file.camera.model_dump()),
         marks=marks,
+        sightings=_sightings(file),
         splits_m=tuple(file.splits_m),
     )
     return Sheet(rep=rep, path=path, clip_path=_clip_path(path, file.clip))
+
+
+def _sightings(file: _SheetFile) -> tuple[Sighting, ...]:
+    lines = (
+        Sighting(
+            label=s.label,
+            free="x",
+            xyz_m=np.array([0.0, s.y_m, s.z_m]),
+            uv_px=np.array([s.u_px, s.v_px]),
+            sd_px=s.sd_px,
+            sd_m=s.sd_m,
+        )
+        for s in file.line
+    )
+    poles = (
+        Sighting(
+            label=s.label,
+            free="z",
+            xyz_m=np.array([s.x_m, s.y_m, 0.0]),
+            uv_px=np.array([s.u_px, s.v_px]),
+            sd_px=s.sd_px,
+            sd_m=s.sd_m,
+        )
+        for s in file.pole
+    )
+    return (*lines, *poles)
 
 
 def _load(path: Path) -> dict[str, Any]:

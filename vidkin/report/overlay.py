@@ -47,13 +47,13 @@ def magnification(errors_px: Array, *, unit: float = 1.0) -> int:
 
 
 def rms_px(camera: Camera) -> float | None:
-    """Root mean square length of the mark errors [px]; None without marks."""
-    return float(np.sqrt(np.mean(np.sum(camera.mark_error_px**2, axis=1)))) if camera.marks else None
+    """Root mean square length of the errors of the marks used [px]; None without marks."""
+    return float(np.sqrt(np.mean(np.sum(camera.mark_error_px[camera.used] ** 2, axis=1)))) if camera.marks else None
 
 
 def rms_m(camera: Camera) -> float | None:
     """The same at the marks' distances, across the line of sight [m]."""
-    return float(np.sqrt(np.mean(camera.mark_error_m**2))) if camera.marks else None
+    return float(np.sqrt(np.mean(camera.mark_error_m[camera.used] ** 2))) if camera.marks else None
 
 
 def heading(camera: Camera, lane: Lane) -> tuple[str, ...]:
@@ -61,7 +61,9 @@ def heading(camera: Camera, lane: Lane) -> tuple[str, ...]:
     px, m = rms_px(camera), rms_m(camera)
     fit = ["no marks"]
     if px is not None and m is not None:
-        fit = [f"{len(camera.marks)} marks", f"rms {px:.2f} px = {100 * m:.2f} cm"]
+        left_out = int(np.count_nonzero(~camera.used))
+        count = f"{len(camera.marks)} marks" + (f", {left_out} left out" if left_out else "")
+        fit = [count, f"rms {px:.2f} px = {100 * m:.2f} cm"]
     where = camera.position_m
     items = [
         *fit,

@@ -28,6 +28,8 @@ _FOOT_BAND_M: Final = 0.10
 _SHADOW_BAND_M: Final = 0.45
 _SHADOW_RATIO: Final = (0.25, 0.985)
 _DEEPEST_M: Final = 0.12
+_SHOE_M: Final = 0.38
+_SHOE_GAP_M: Final = 0.12
 _FEET_CUT_M: Final = 0.03
 #: Width of the rim that blur and compression add to a silhouette [px].
 _RIM_PX: Final = 2
@@ -124,7 +126,7 @@ class Finder:
         shape = (rows.stop - rows.start, columns.stop - columns.start)
         half = tuple(slice(s.start // 2, -(-s.stop // 2)) for s in (rows, columns))
         score = np.zeros(shape, np.float32)
-        chroma_score = np.zeros(shape, np.float32)
+        darker = np.zeros(shape, bool)
         back_chroma: list[Singles] = []
         seen_chroma: list[Singles] = []
         for i, (plane, back, noise) in enumerate(
@@ -140,11 +142,12 @@ class Finder:
                 miss = cv2.resize(miss, shape[::-1], interpolation=cv2.INTER_LINEAR)
                 seen_chroma.append(seen)
                 back_chroma.append(expected)
-                chroma_score += (miss**2).astype(np.float32)
+            else:
+                darker = miss < 0
             score += (miss**2).astype(np.float32)
         mask = _trimmed(self._hysteresis(score, near, rows, columns), score)
         self._drop_shadow(mask, planes[0][rows, columns], light, (rows, columns), seen_chroma, back_chroma)
-        return self._measure(self._solid(mask, rows, columns), rows, columns)
+        return self._measure(self._solid(mask, darker, rows, columns), rows, columns)
 
     def _hysteresis(self, score: Singles, near: NDArray[np.uint8], rows: slice, columns: slice) -> NDArray[np.uint8]:
         """Pixels over the low level that touch one over the high level, inside the coarse blob's surroundings."""
@@ -201,8 +204,10 @@ class Finder:
         left = cv2.morphologyEx(mask, cv2.MORPH_OPEN, np.ones((3, 3), np.uint8))
         mask[band & (left == 0)] = 0
 
-    def _solid(self, mask: NDArray[np.uint8], rows: slice, columns: slice) -> NDArray[np.uint8]:
-        """Close small gaps and fill small holes; drop crumbs, and flat pieces on the ground (left-over shadow)."""
+    def _solid(
+        self, mask: NDArray[np.uint8], darker: NDArray[np.bool_], rows: slice, columns: slice
+    ) -> NDArray[np.uint8]:
+        """Close small gaps and fill small holes; drop crumbs, and pieces on the ground that are left-over shadow."""
         scale = self.corridor.scale_px_m
         k = max(1, round(0.02 * scale)) * 2 + 1
         mask = cv2.morphologyEx(mask, cv2.MORPH_CLOSE, np.ones((k, k), np.uint8)).astype(np.uint8)
@@ -220,9 +225,18 @@ class Finder:
             ground = (
                 self.corridor.ground_v[np.clip(middle, 0, self.corridor.width_px - 1)] - self.corridor.top - rows.start
             )
+            # Apart from the body, low down, and flat or darker than the ground: a shadow's remains, unless it hangs
+            # on the body and is no larger than a shoe.
             flat = stats[:, cv2.CC_STAT_HEIGHT] < 0.12 * scale
             flat &= stats[:, cv2.CC_STAT_WIDTH] > 1.5 * stats[:, cv2.CC_STAT_HEIGHT]
-            keep &= ~(flat & (stats[:, cv2.CC_STAT_TOP] > ground - _SHADOW_BAND_M * scale))
+            dark = np.bincount(labels.ravel(), darker.ravel(), count) > 0.7 * stats[:, cv2.CC_STAT_AREA]
+            largest = 1 + int(np.argmax(stats[1:, cv2.CC_STAT_AREA]))
+            gap = 2 * max(1, round(_SHOE_GAP_M * scale)) + 1
+            around = cv2.dilate((labels == largest).astype(np.uint8), np.ones((gap, gap), np.uint8))
+            shoe = np.bincount(labels.ravel(), around.ravel(), count) > 0
+            shoe &= stats[:, cv2.CC_STAT_WIDTH] < _SHOE_M * scale
+            main = np.arange(count) == largest
+            keep &= main | ~((flat | (dark & ~shoe)) & (stats[:, cv2.CC_STAT_TOP] > ground - _SHADOW_BAND_M * scale))
             keep[0] = False
             mask = keep[labels].astype(np.uint8)
         return mask
