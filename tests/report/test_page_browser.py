@@ -3,8 +3,8 @@
 from __future__ import annotations
 
 import importlib.util
-import re
 import os
+import re
 import shutil
 from collections.abc import Iterator
 from dataclasses import replace
