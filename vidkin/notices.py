@@ -163,12 +163,6 @@ REGISTRY: Final[dict[str, Entry]] = {
         "These marks leave the length of the lane uncertain by {percent:.1f} % (one sd).",
         "Add marks at both ends of the filmed stretch, on both lane lines.",
     ),
-    "tag_unread": Entry(
-        "camera",
-        "warning",
-        "Tag {tag} gives no mark: {reason}.",
-        "{hint}",
-    ),
     # --- track ---
     "others_run": Entry(
         "track",
@@ -316,7 +310,8 @@ FAILURES: Final[dict[str, Entry]] = {
     "camera_moves": Entry(
         "track",
         "serious",
-        "{percent:.0f} % of the background changes from frame to frame: the camera pans, zooms or is held by hand.",
+        "{percent:.0f} % of the background's texture moves in the course of the clip: the camera pans, zooms or is held by "
+        "hand.",
         "Only a camera that stands still on a tripod can be measured from.",
     ),
     "only_backwards": Entry(

@@ -407,7 +407,7 @@ class Split:
 class LawFit:
     """One sprint law fitted to the positions.
 
-    `parameters` by name, `sd` by name; `criterion` the corrected Akaike criterion (smaller is better),
+    `parameters` by name, `sd` by name; `criterion` the Akaike criterion (smaller is better),
     `weight` its Akaike weight; `t_s`, `x_m`, `v_mps`, `a_mps2` the fitted curve at the rows that were fitted (the
     motion's, averaged over short spans); `residual_m` measured minus fitted there (m/s for a table of speeds);
     `words` what the law assumes, in one line.

@@ -293,7 +293,7 @@ def test_lane_out_of_view(world: SimpleNamespace, alone) -> None:
 
 
 def test_too_few_frames(alone) -> None:
-    answer = refused(replace(alone, duration_s=0.06), "too_few_frames")
+    answer = refused(replace(alone, duration_s=0.075), "too_few_frames")
     assert "has 3 frames" in answer.reason
 
 

@@ -91,6 +91,7 @@ def test_a_camera_without_marks(monkeypatch: pytest.MonkeyPatch, camera_of: Call
     bare = replace(
         camera_of(),
         marks=(),
+        used=np.zeros(0, dtype=bool),
         mark_uv_px=np.zeros((0, 2)),
         mark_error_px=np.zeros((0, 2)),
         mark_error_m=np.zeros(0),

@@ -66,7 +66,8 @@ def test_the_scale_hangs_below_the_line_nearer_the_camera(camera_of: Callable[..
     camera = camera_of()
     p = camera.parameters.copy()
     p[4], p[6] = 1.22 - p[4], -p[6]
-    other = replace(camera, parameters=p, marks=(), mark_uv_px=np.zeros((0, 2)), mark_error_px=np.zeros((0, 2)),
+    other = replace(camera, parameters=p, marks=(), used=np.zeros(0, bool), mark_uv_px=np.zeros((0, 2)),
+                   mark_error_px=np.zeros((0, 2)),
                     mark_error_m=np.zeros(0))  # fmt: skip
     feet = dict(lane_drawing(other, lane).numbers)
     expected = by_opencv(other, np.array([[10.0, 1.22, -0.2]]))[0]

@@ -62,7 +62,8 @@ def test_marks_table_numbers(camera_of: Callable[..., Camera]) -> None:
         line = row(shown, str(k))
         assert mark.label in line
         assert line.split()[-1] == f"{100 * metres:.2f}"
-    bare = replace(camera, marks=(), mark_uv_px=np.zeros((0, 2)), mark_error_px=np.zeros((0, 2)),
+    bare = replace(camera, marks=(), used=np.zeros(0, bool), mark_uv_px=np.zeros((0, 2)),
+                   mark_error_px=np.zeros((0, 2)),
                    mark_error_m=np.zeros(0))  # fmt: skip
     assert "No marks" in printed(text.marks_table(bare))
 

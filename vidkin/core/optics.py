@@ -63,6 +63,8 @@ def largest_radius(k1: float, k2: float) -> float:
 
     Zero of d(r g)/dr = 1 + 3 k1 r^2 + 5 k2 r^4; infinite where there is none.
     """
+    # Terms this small turn nowhere near a picture, and would overflow.
+    k1, k2 = (k if abs(k) > 1e-12 else 0.0 for k in (k1, k2))
     roots = np.roots([5 * k2, 3 * k1, 1.0]) if k2 else np.roots([3 * k1, 1.0]) if k1 else np.zeros(0)
     real = np.real(roots[np.abs(np.imag(roots)) < 1e-12])
     positive = real[real > 0]
@@ -118,7 +120,8 @@ def undistort(p: Array, uv_px: Array, size_px: tuple[int, int]) -> Array:
     r = np.minimum(target, 0.99 * limit)
     for _ in range(_NEWTON_STEPS):
         r2 = r * r
-        step = (r * (1 + k1 * r2 + k2 * r2**2) - target) / (1 + 3 * k1 * r2 + 5 * k2 * r2**2)
+        slope = 1 + 3 * k1 * r2 + 5 * k2 * r2**2
+        step = (r * (1 + k1 * r2 + k2 * r2**2) - target) / np.where(np.abs(slope) < 1e-9, 1e-9, slope)
         r = np.clip(r - step, 0.0, limit)
     miss = np.abs(r * (1 + k1 * r**2 + k2 * r**4) - target) > 1e-9 * np.maximum(1, target)
     scale = np.where(target > 0, r / np.where(target > 0, target, 1), 1.0)

@@ -86,7 +86,7 @@ def cadence(t_s: Array, spread: Array) -> tuple[float, float] | None:
     """Step rate and its sd [Hz] from the spread of the legs, which opens and closes once a step.
 
     Lomb-Scargle periodogram of the spread less its moving mean (Lomb 1976, Scargle 1982; from memory), its peak
-    refined by a parabola; sd by the resolution 1/T over the peak's signal-to-noise. None: no clear peak.
+    refined by a parabola; sd from the noise about it. None: no clear peak.
     """
     if t_s.size < 16 or np.ptp(t_s) * _RATES_HZ[0] < 1.0:
         return None
@@ -103,10 +103,22 @@ def cadence(t_s: Array, spread: Array) -> tuple[float, float] | None:
         return None
     a, b, c = power[best - 1 : best + 2]
     shift = 0.5 * (a - c) / (a - 2 * b + c) if a - 2 * b + c != 0 else 0.0
-    signal = power[best] / max(float(power.sum() * (rates[1] - rates[0]) * span / 2 - power[best]), 1e-12)
-    return float(rates[best] + shift * (rates[1] - rates[0])), float(
-        0.55 / span / np.sqrt(1 + signal * rates[best] * span)
-    )
+    rate = float(rates[best] + shift * (rates[1] - rates[0]))
+    return rate, _rate_sd(t_s, spread / np.maximum(smooth, 1e-9) - 1.0, rate)
+
+
+def _rate_sd(t_s: Array, y: Array, rate_hz: float) -> float:
+    """Sd of a sinusoid's frequency in noise [Hz]: sqrt(24 s^2/(A^2 N))/(2 pi T).
+
+    Rife & Boorstyn, IEEE Trans. Inf. Theory 20 (1974) 591 (from memory); doubled, since neighbouring frames err
+    alike, and never below 0.03/T.
+    """
+    basis = np.column_stack([np.cos(2 * np.pi * rate_hz * t_s), np.sin(2 * np.pi * rate_hz * t_s), np.ones_like(t_s)])
+    found = np.linalg.lstsq(basis, y, rcond=None)[0]
+    span, size = float(np.ptp(t_s)), float(np.hypot(found[0], found[1]))
+    noise = float(np.std(y - basis @ found))
+    bound = 2 * np.sqrt(24 / t_s.size) * noise / max(size, 1e-9) / (2 * np.pi * span)
+    return float(np.hypot(bound, 0.03 / span))
 
 
 @dataclass(frozen=True, slots=True)

@@ -238,9 +238,9 @@ def laws(analysis: Analysis) -> Markup:
         )
         for law in sorted(fit.laws.values(), key=lambda law: law.criterion)
     ]
-    head = ("Law", "What it assumes", "Parameters (± sd)", "AICc", "Above the best", "Weight", "Residual rms, cm")
+    head = ("Law", "What it assumes", "Parameters (± sd)", "AIC", "Above the best", "Weight", "Residual rms, cm")
     words = (
-        "AICc is Akaike's criterion corrected for few data; smaller is better, a difference below 2 decides "
+        "AIC is Akaike's criterion; smaller is better, a difference below 2 decides "
         "nothing. The weight is the law's share of support among these laws only: it does not say that any of them "
         "is true."
     )

@@ -97,7 +97,7 @@ def _top_speed(laws: Mapping[str, Solved], weights: Mapping[str, float], view: V
         return _fastest(law, q, view)[0]
 
     def place(law: models.Law, q: Array) -> float:
-        return float(q[0] + law.position(_fastest(law, q, view)[1] - q[1]))
+        return float(q[0] + law.position(_fastest(law, q, view)[1] - q[1])) - view.start_x_m
 
     at = mixed(laws, weights, "top_speed_at", place, unit="m", level=level)
     if at.low is not None and at.high is not None:
@@ -138,10 +138,16 @@ def _start_quantities(
             profiled(mono, "v_max", {"v_max": 1.0}, unit="m/s", level=level),
             profiled(mono, "tau", {"tau": 1.0}, unit="s", level=level),
         )
-    best = next(iter(laws.values()))
+    best = next(iter(_starters(laws).values()))
     if best.problem.free[1]:
         out.add(profiled(best, "first_movement", {"t0": 1.0}, unit="s", level=level, log=False))
     _constant_power(out, laws, view, drag, level=level)
+
+
+def _starters(laws: Mapping[str, Solved]) -> Mapping[str, Solved]:
+    """The laws that may be asked for the start: constant power has no finite force there, and mistimes it."""
+    power = (models.ConstantPower.name, models.ConstantPowerDrag.name)
+    return {name: s for name, s in laws.items() if name not in power} or laws
 
 
 def _constant_power(out: Answer, laws: Mapping[str, Solved], view: View, drag: Drag | Failure, *, level: float) -> None:
@@ -256,7 +262,10 @@ def splits(
     def when(law: models.Law, q: Array) -> Array:
         return np.asarray(law.time_at(view.start_x_m + lines - q[0]))
 
-    band = mixed_band(laws, weights, when, level=level)
+    starters = _starters(laws)
+    share = sum(weights[name] for name in starters)
+    shares = {name: weights[name] / share if share > 0 else 1 / len(starters) for name in starters}
+    band = mixed_band(starters, shares, when, level=level)
     return tuple(
         Split(distance_m=float(d), time_s=float(t), low_s=float(low), high_s=float(high))
         for d, t, low, high, held in zip(lines, band.value, band.low, band.high, band.held, strict=True)

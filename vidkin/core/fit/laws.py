@@ -13,7 +13,7 @@ from vidkin.core.fit.data import Series
 from vidkin.core.uncertainty import NoSolution, Solution, solve, whitener
 from vidkin.stages import Array
 
-_FAR: Final = 1e6
+_WEAK_PRIOR: Final = 1.0
 
 
 @dataclass(frozen=True, slots=True, kw_only=True)
@@ -49,7 +49,10 @@ class Form:
 
     def natural(self, q: Array) -> Array:
         """Natural values of the parameters after (x0, t0)."""
-        return np.array([v if n in self.straight else np.exp(v) for n, v in zip(self.names, q[2:], strict=True)])
+        # Beyond e^+-60 no law means anything; unclipped, a wild step of the solver would overflow.
+        return np.array(
+            [v if n in self.straight else np.exp(np.clip(v, -60, 60)) for n, v in zip(self.names, q[2:], strict=True)]
+        )
 
     def law(self, q: Array) -> models.Law | None:
         """The law at q, or None outside its domain."""
@@ -75,8 +78,8 @@ class Problem:
         self._held[1] = form.fixed_t0
         self._prior = np.isfinite(form.prior_sd) & ~self._held
         self.free = ~self._held
-        #: Among the free parameters, those without a prior.
-        self.decided_by_data = ~np.isfinite(form.prior_sd)[self.free]
+        #: Among the free parameters, those that the data decide: without a prior, or with a very weak one.
+        self.decided_by_data = (form.prior_sd >= _WEAK_PRIOR)[self.free]
 
     def full(self, p: Array) -> Array:
         """All parameters from the free ones; a held one stays at its start."""

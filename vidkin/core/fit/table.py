@@ -19,12 +19,15 @@ from vidkin.notices import Failure, failure, notice
 from vidkin.stages import Array, Fit, Rep, Settings
 
 _LEAST_ROWS: Final = 5
+_LEAST_WAY_M: Final = 3.0
 #: A table of more rows than this is a sampled curve, not a set of splits.
 _SPLITS: Final = 15
 #: A first reading below this share of the highest speed shows the start.
 _START_SHARE: Final = 0.3
 #: From rest, the mean speed of the first split stays below this share of the next.
 _FIRST_SHARE: Final = 0.85
+#: Steps to which times are read, coarsest first [s].
+_TIME_STEPS_S: Final = (0.1, 0.01, 0.001)
 _LEAST_SD: Final = {"position": 0.005, "speed": 0.005}
 
 
@@ -57,6 +60,9 @@ def fit_table(
     t, y = np.asarray(t_s, dtype=np.float64)[kept], np.asarray(y, dtype=np.float64)[kept]
     if t.size < _LEAST_ROWS:
         return failure("too_few_rows", rows=t.size, least=_LEAST_ROWS)
+    way = float(np.ptp(y)) if x_m is not None else float(np.sum(0.5 * (y[1:] + y[:-1]) * np.diff(t)))
+    if not way > _LEAST_WAY_M:
+        return failure("too_little_run", metres=way, least=_LEAST_WAY_M, rows=t.size)
     view, rough = _speed_view(t, y, rep) if x_m is None else _position_view(t, y, rep)
     drag, remarks = drag_of(rep.athlete, rep.air)
     kind = "speed" if x_m is None else "position"
@@ -80,7 +86,7 @@ def fit_table(
         kind=plain.kind,
         t_s=t,
         y=y,
-        cov=np.eye(t.size) * max(sd, _LEAST_SD[kind]) ** 2,
+        cov=np.eye(t.size) * max(sd, _LEAST_SD[kind]) ** 2 + (_rounding(t, y) if kind == "position" else 0.0),
         fixed_origin=plain.fixed_origin,
     )
     fit = fit_series(series, view, rep, rough=rough, drag=drag, settings=settings)
@@ -88,6 +94,15 @@ def fit_table(
         return fit
     size = notice("table_errors", sd=sd, unit="m" if x_m is not None else "m/s")
     return replace(fit, notices=(*remarks, size, *fit.notices))
+
+
+def _rounding(t_s: Array, x_m: Array) -> Array:
+    """Covariance (N, N) [m^2] of times that were rounded, up or to the nearest: all by up to half a step together."""
+    steps = [q for q in _TIME_STEPS_S if np.allclose(t_s / q, np.round(t_s / q), atol=1e-4)]
+    if not steps:
+        return np.zeros((t_s.size, t_s.size))
+    v = np.gradient(x_m, t_s)
+    return np.asarray((steps[0] / 2) ** 2 * np.outer(v, v) + np.diag((steps[0] * v) ** 2 / 12))
 
 
 def _position_view(t: Array, x: Array, rep: Rep) -> tuple[View, Rough]:

@@ -17,7 +17,7 @@ from vidkin.stages import Array, Bools, Camera, Frame, Lane, Track
 __all__ = ["Corridor", "Sampler", "follow", "sampler"]
 
 _LEAST_SAMPLES: Final = 5
-_MOVING_CAMERA: Final = 0.25
+_MOVING_CAMERA: Final = 0.3
 _LEAST_ROWS: Final = 12
 _LEAST_SPEED_MPS: Final = 0.7
 #: How far from the declared lane's centre a runner may be, in lane widths, before it is another lane.
@@ -80,7 +80,7 @@ def choose(linker: Linker, area: Corridor) -> Track | Failure:
         return failure("other_lane_only", y=nearest.lateral_m, centre=lane.centre_y_m)
     best = max(ours, key=lambda p: _merit(p, lane))
     remarks: list[Notice] = []
-    rivals = [p for p in moving if p is not best and p.gain_m > 0.5 * best.gain_m and p.path is not best.path]
+    rivals = [p for p in moving if p.path is not best.path and p.gain_m > 0.5 * best.gain_m and not _apart(p, best)]
     if rivals:
         remarks.append(notice("others_run", count=len(rivals), y=best.lateral_m))
     if sum(p.gain_m > 0.5 * best.gain_m for p in ours if p.path is best.path or _apart(p, best)) > 1:

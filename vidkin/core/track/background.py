@@ -22,6 +22,8 @@ _LEAST_NOISE: Final = 0.8
 _ROWS_AT_ONCE: Final = 32
 _NOISE_PAIRS: Final = 12
 _DRIFT_PIXELS: Final = 1500
+_STIRRED_LEVELS: Final = 8.0
+_STIRRED_TIME: Final = 0.35
 #: The majority is overruled only where its outline stands out by this factor.
 _CLEARLY: Final = 1.25
 _TEXTURE_PX: Final = 0.25
@@ -72,7 +74,7 @@ def cut(frame: Frame, rows: slice) -> Planes:
 class Background:
     """Median planes and noise sd planes [grey levels] of the corridor's rows; luma, U, V.
 
-    `moving_share`: share of the luma plane that changes all the time (a moving camera, or leaves).
+    `moving_share`: share of textured pixels that change much of the time (a moving camera).
     """
 
     rows: slice
@@ -144,22 +146,25 @@ def learn(samples: list[tuple[int, Planes]], rows: slice) -> Background:
     """
     planes, noise = [], []
     stacks = [np.stack([s[1][i] for s in samples]) for i in range(3)]
-    moving = 0.0
     for i, stack in enumerate(stacks):
         planes.append(_median(stack).astype(np.float32))
         noise.append(_noise(stack, planes[i]))
-        if i == 0:
-            moving = _moving_share(stack, planes[0], noise[0])
     _settle(stacks, planes, noise[0])
-    return Background(rows, (planes[0], planes[1], planes[2]), (noise[0], noise[1], noise[2]), moving)
+    return Background(
+        rows, (planes[0], planes[1], planes[2]), (noise[0], noise[1], noise[2]), _moving_share(stacks[0], planes[0])
+    )
 
 
-def _moving_share(stack: NDArray[np.uint8], median: Singles, noise: Singles) -> float:
-    """Share of textured pixels that differ from the median in most samples: large for a moving camera."""
-    far = np.mean(np.abs(stack[:, ::4, ::4].astype(np.float32) - median[::4, ::4]) > 4 * noise[::4, ::4] + 4, axis=0)
-    edge = np.abs(cv2.Laplacian(cv2.GaussianBlur(median, (0, 0), 2), cv2.CV_32F))[::4, ::4]
-    textured = edge >= np.quantile(edge, 0.5)
-    return float(np.mean(far[textured] > 0.4))
+def _moving_share(stack: NDArray[np.uint8], median: Singles) -> float:
+    """Share of textured pixels that differ from their median in much of the clip: large for a moving camera.
+
+    Against a fixed step, not the noise: under a pan the noise estimate itself is made of the pan.
+    """
+    far = np.mean(np.abs(stack[:, ::4, ::4].astype(np.float32) - median[::4, ::4]) > _STIRRED_LEVELS, axis=0)
+    smooth = cv2.GaussianBlur(stack[0].astype(np.float32), (0, 0), 2)
+    edge = np.hypot(cv2.Sobel(smooth, cv2.CV_32F, 1, 0), cv2.Sobel(smooth, cv2.CV_32F, 0, 1))[::4, ::4]
+    textured = edge >= np.quantile(edge, 0.7)
+    return float(np.mean(far[textured] > _STIRRED_TIME))
 
 
 def _settle(stacks: list[NDArray[np.uint8]], planes: list[Singles], noise: Singles) -> None:
