@@ -30,6 +30,7 @@ _MEAN_NEAR_TOP: Final = 0.985
 _LENGTH_BY_SPEED: Final = 0.6
 #: Arms and head stir before, or after, the centre of mass does: sd of the onset seen in an outline [s].
 _ONSET_S: Final = 0.008
+_NO_DOUBT: Final = 0.99
 _EDGE_M: Final = 0.12
 #: What a touch-down and a foot place are worth (simulated scenes): sd.
 _CONTACT_S: Final = 0.015
@@ -73,7 +74,7 @@ def quantities(
     out = Answer([], [], [])
     out.add(*_top_speed(laws, weights, view, level=level))
     if view.start == "standing":
-        _start_quantities(out, laws, view, drag, level=level)
+        _start_quantities(out, laws, weights, view, drag, level=level)
     else:
         out.refuse("start_not_seen", names="F0, V0, P_max, RF_max, D_RF, v_max, tau, Z, first_movement and splits")
     if isinstance(drag, Failure):
@@ -112,7 +113,13 @@ def _top_speed(laws: Mapping[str, Solved], weights: Mapping[str, float], view: V
 
 
 def _start_quantities(
-    out: Answer, laws: Mapping[str, Solved], view: View, drag: Drag | Failure, *, level: float
+    out: Answer,
+    laws: Mapping[str, Solved],
+    weights: Mapping[str, float],
+    view: View,
+    drag: Drag | Failure,
+    *,
+    level: float,
 ) -> None:
     """What only a start in view can tell."""
     if (fv := laws.get(models.ForceVelocity.name)) is not None and drag:
@@ -138,15 +145,20 @@ def _start_quantities(
             profiled(mono, "v_max", {"v_max": 1.0}, unit="m/s", level=level),
             profiled(mono, "tau", {"tau": 1.0}, unit="s", level=level),
         )
-    best = next(iter(_starters(laws).values()))
+    best = next(iter(_starters(laws, weights).values()))
     if best.problem.free[1]:
         out.add(profiled(best, "first_movement", {"t0": 1.0}, unit="s", level=level, log=False))
     _constant_power(out, laws, view, drag, level=level)
 
 
-def _starters(laws: Mapping[str, Solved]) -> Mapping[str, Solved]:
-    """The laws that may be asked for the start: constant power has no finite force there, and mistimes it."""
+def _starters(laws: Mapping[str, Solved], weights: Mapping[str, float]) -> Mapping[str, Solved]:
+    """The laws that may be asked for the start.
+
+    Constant power has no finite force there and mistimes it, unless the data leave no doubt that it is the law.
+    """
     power = (models.ConstantPower.name, models.ConstantPowerDrag.name)
+    if sum(weights.get(name, 0.0) for name in power) > _NO_DOUBT:
+        return laws
     return {name: s for name, s in laws.items() if name not in power} or laws
 
 
@@ -262,7 +274,7 @@ def splits(
     def when(law: models.Law, q: Array) -> Array:
         return np.asarray(law.time_at(view.start_x_m + lines - q[0]))
 
-    starters = _starters(laws)
+    starters = _starters(laws, weights)
     share = sum(weights[name] for name in starters)
     shares = {name: weights[name] / share if share > 0 else 1 / len(starters) for name in starters}
     band = mixed_band(starters, shares, when, level=level)
